@@ -1,0 +1,1 @@
+"""Accuracy: how far lines lie from a truth, by the published measures."""

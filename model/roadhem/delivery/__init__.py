@@ -1,0 +1,1 @@
+"""Delivery: pictures and reports that a person can judge at a glance."""

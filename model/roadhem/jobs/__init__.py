@@ -1,0 +1,1 @@
+"""Jobs: whole tile sets from start to finish, resumable, with atomic outputs."""

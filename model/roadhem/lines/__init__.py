@@ -1,0 +1,1 @@
+"""Lines: traces merged, simplified, named and written as layers."""

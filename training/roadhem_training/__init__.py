@@ -1,0 +1,1 @@
+"""Roadhem's training side: invented scenes, the network, learning and export."""
