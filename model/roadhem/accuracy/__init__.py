@@ -1,1 +1,1 @@
-"""Accuracy: how far lines lie from a truth, by the published measures."""
+"""Accuracy: how lines compare with the truth, by buffer measures and lateral error."""
