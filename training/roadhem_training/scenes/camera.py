@@ -1,0 +1,153 @@
+"""From light to a delivered picture: blur, noise, tones, compression, and what mosaics do."""
+
+from __future__ import annotations
+
+import cv2
+import numpy as np
+from numpy.typing import NDArray
+
+from roadhem_training.scenes.flight import Flight
+
+GAMMA_STEPS = 4096
+COARSEST_M = 0.25
+"""Coarsest pixel that a picture is taken with before it is resampled."""
+
+
+def take_picture(
+    light: NDArray[np.float32], pixel: float, flight: Flight, rng: np.random.Generator
+) -> tuple[NDArray[np.uint8], NDArray[np.bool_]]:
+    """Turn relative light into a delivered picture.
+
+    Parameters
+    ----------
+    light : (rows, cols, 3) float32, 1 is white in full sun; changed in place.
+    pixel : metres.
+
+    Returns
+    -------
+    image (rows, cols, 3) uint8, valid (rows, cols) bool.
+    """
+    light = cv2.GaussianBlur(light, (0, 0), rng.uniform(0.35, 0.75))
+    if flight.has("coarser"):
+        light = resample(light, pixel, rng)
+    image = tone_curve(light, flight, rng)
+    if flight.has("halo"):
+        image = sharpen(image, rng)
+    image += noise_for(image, rng)
+    picture = np.clip(image, 0, 255).astype(np.uint8)
+    picture = deliver(picture, flight, rng)
+    return wedge(picture, flight, rng)
+
+
+def resample(light: NDArray[np.float32], pixel: float, rng: np.random.Generator) -> NDArray[np.float32]:
+    """Average to a coarser pixel and interpolate back, as a coarser flight would come."""
+    factor = float(np.exp(rng.uniform(0, np.log(max(COARSEST_M / pixel, 1.05)))))
+    rows, cols = light.shape[:2]
+    size = (max(round(cols / factor), 8), max(round(rows / factor), 8))
+    small = cv2.resize(light, size, interpolation=cv2.INTER_AREA)
+    back = cv2.INTER_CUBIC if rng.random() < 0.6 else cv2.INTER_LINEAR
+    return cv2.resize(small, (cols, rows), interpolation=back)
+
+
+def tone_curve(light: NDArray[np.float32], flight: Flight, rng: np.random.Generator) -> NDArray[np.float32]:
+    """Exposure, white balance, haze, gamma and contrast: light to 0..255 float32."""
+    exposure = float(np.exp(rng.normal(0.0, 0.18)))
+    balance = np.exp(rng.normal(0, 0.045, 3))
+    table = np.empty((GAMMA_STEPS, 3), np.float32)
+    haze = rng.uniform(0.02, 0.16) if flight.has("haze") else 0.0
+    gamma = 2.2 * np.exp(rng.normal(0, 0.10))
+    contrast = rng.uniform(0.8, 1.3) * (1.3 if flight.has("stretched") else 1.0)
+    black = rng.uniform(-0.05, 0.05)
+    ramp = np.linspace(0, 1.5, GAMMA_STEPS)
+    for k in range(3):
+        value = ramp * exposure * balance[k]
+        value = value * (1 - haze) + haze * (0.75, 0.85, 1.0)[k] * 0.6
+        bright = np.clip(value, 0, None) ** (1 / gamma)
+        table[:, k] = 255 * ((bright - 0.45) * contrast + 0.45 + black)
+    table = np.where(table > 225, 225 + 30 * np.tanh((table - 225) / 30), table)
+    index = np.clip(light * np.float32((GAMMA_STEPS - 1) / 1.5), 0, GAMMA_STEPS - 1).astype(np.uint16)
+    out = np.empty_like(light)
+    for k in range(3):
+        out[..., k] = table[index[..., k], k]
+    return out
+
+
+def sharpen(image: NDArray[np.float32], rng: np.random.Generator) -> NDArray[np.float32]:
+    """Unsharp mask: a halo along edges."""
+    soft = cv2.GaussianBlur(image, (0, 0), rng.uniform(0.7, 1.6))
+    amount = rng.uniform(0.2, 1.1)
+    return cv2.addWeighted(image, 1 + amount, soft, -amount, 0)
+
+
+def noise_for(image: NDArray[np.float32], rng: np.random.Generator) -> NDArray[np.float32]:
+    """Sensor noise: grows with the signal, mostly the same in all bands, sometimes smeared by resampling."""
+    level = float(np.exp(rng.uniform(np.log(0.4), np.log(5.0))))
+    grey = rng.standard_normal(image.shape[:2], np.float32)
+    colour = rng.standard_normal(image.shape, np.float32) * np.float32(rng.uniform(0.1, 0.5))
+    noise = grey[..., None] + colour
+    if rng.random() < 0.5:
+        noise = cv2.GaussianBlur(noise, (0, 0), 0.7) * np.float32(2.0)
+    return noise * np.float32(level)
+
+
+def deliver(picture: NDArray[np.uint8], flight: Flight, rng: np.random.Generator) -> NDArray[np.uint8]:
+    """Apply what mosaicking, conversion and compression do."""
+    if flight.has("seam"):
+        picture = seam(picture, rng)
+    if flight.has("smear"):
+        picture = smear(picture, rng)
+    if flight.has("grey"):
+        picture = np.repeat(cv2.cvtColor(picture, cv2.COLOR_RGB2GRAY)[..., None], 3, axis=2)
+    if flight.has("jpeg"):
+        quality = int(rng.integers(45, 96))
+        done, data = cv2.imencode(".jpg", picture[..., ::-1], [cv2.IMWRITE_JPEG_QUALITY, quality])
+        if done:
+            picture = np.ascontiguousarray(cv2.imdecode(data, cv2.IMREAD_COLOR)[..., ::-1])
+    return picture
+
+
+def side_of_line(shape: tuple[int, int], rng: np.random.Generator, at: float) -> NDArray[np.bool_]:
+    """Pixels on one side of a random line; `at` 0 runs through the middle, 1 through the farthest corner."""
+    angle = rng.uniform(0, 2 * np.pi)
+    rows, cols = shape
+    x = np.arange(cols, dtype=np.float32) - cols / 2
+    y = np.arange(rows, dtype=np.float32)[:, None] - rows / 2
+    return x * np.cos(angle) + y * np.sin(angle) > at * 0.5 * np.hypot(rows, cols)
+
+
+def seam(picture: NDArray[np.uint8], rng: np.random.Generator) -> NDArray[np.uint8]:
+    """Join two pictures along a line: a colour step and a shift of at most a pixel or so."""
+    shift = rng.normal(0, 0.5, 2).clip(-1.2, 1.2)
+    gain = np.exp(rng.normal(0, 0.06)) * np.exp(rng.normal(0, 0.02, 3))
+    matrix = np.array([[1, 0, shift[0]], [0, 1, shift[1]]])
+    size = (picture.shape[1], picture.shape[0])
+    other = cv2.warpAffine(picture, matrix, size, flags=cv2.INTER_LINEAR, borderMode=cv2.BORDER_REPLICATE)
+    other = np.clip(other * gain.astype(np.float32), 0, 255).astype(np.uint8)
+    part = side_of_line(picture.shape[:2], rng, rng.uniform(-0.4, 0.6))
+    return np.where(part[..., None], other, picture)
+
+
+def smear(picture: NDArray[np.uint8], rng: np.random.Generator) -> NDArray[np.uint8]:
+    """Drag a small piece of the picture along one direction, as failed terrain models do."""
+    rows, cols = picture.shape[:2]
+    size = int(min(rows, cols) * rng.uniform(0.05, 0.15))
+    r, c = int(rng.integers(rows - size)), int(rng.integers(cols - size))
+    length = int(rng.integers(5, 17))
+    kernel = np.zeros((length, length), np.float32)
+    end = (int(rng.integers(length)), length - 1)
+    cv2.line(kernel, (length - 1 - end[0], 0), end, 1.0)
+    piece = picture[r : r + size, c : c + size]
+    picture = picture.copy()
+    picture[r : r + size, c : c + size] = cv2.filter2D(piece, -1, kernel / kernel.sum())
+    return picture
+
+
+def wedge(
+    picture: NDArray[np.uint8], flight: Flight, rng: np.random.Generator
+) -> tuple[NDArray[np.uint8], NDArray[np.bool_]]:
+    """Cut away what the flight did not cover."""
+    valid = np.ones(picture.shape[:2], bool)
+    if flight.has("no_data"):
+        valid = ~side_of_line(valid.shape, rng, rng.uniform(0.45, 0.9))
+        picture = np.where(valid[..., None], picture, np.uint8(0))
+    return picture, valid

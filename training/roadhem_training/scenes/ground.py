@@ -1,0 +1,142 @@
+"""The ground seen from above in even light: covers laid over one another, curb stones, wear."""
+
+from __future__ import annotations
+
+import cv2
+import numba
+import numpy as np
+from numpy.typing import NDArray
+
+from roadhem_training.scenes.coverage import Frame, Patch, cover_area
+from roadhem_training.scenes.materials import JOINTLESS, Material, Rows, linear, material_of, pick_colour
+from roadhem_training.scenes.noise import DRIFT_M, GRAIN_M, PATCH_M, PEBBLE_M, SPOT_M, Noise
+from roadhem_training.scenes.world import Cover, World
+
+RAGGED = 0.5
+"""How much of a soft edge's width its outline wanders."""
+
+
+def lay_ground(world: World, frame: Frame, noise: Noise, rng: np.random.Generator) -> NDArray[np.float32]:
+    """Paint the covers and curb stones of a world: (rows, cols, 3) float32 relative reflectance."""
+    image = np.full((frame.rows, frame.cols, 3), 0.15, np.float32)
+    means: dict[str, NDArray[np.float32]] = {}
+    for cover in world.ground + world.curb_stones:
+        material = material_of(cover.material)
+        if cover.material not in means or rng.random() < 0.25:
+            means[cover.material] = pick_colour(material, rng, 0.0)
+        colour = means[cover.material] * np.float32((1 + 0.28 * cover.tone) ** 2.2)
+        patch = soft_patch(cover, frame, noise)
+        if patch is not None:
+            rows = None if cover.material in JOINTLESS else material.rows
+            lay(image, patch, material, colour, rows, cover.direction, frame, noise, rng)
+    return image
+
+
+def soft_patch(cover: Cover, frame: Frame, noise: Noise) -> Patch | None:
+    """Coverage of a cover; a soft edge fades and wanders about the true one."""
+    softness = cover.edge_softness
+    patch = cover_area(cover.area, frame, 2 * softness)
+    if patch is None or softness < 0.5 * frame.pixel:
+        return patch
+    faded = cv2.GaussianBlur(patch.cover, (0, 0), softness / frame.pixel / 2)
+    wander = RAGGED * 0.3 * (noise.at(PEBBLE_M, 3)[patch.window] + noise.at(SPOT_M, 3)[patch.window])
+    wander = wander * (4 * faded * (1 - faded))
+    sharper = np.clip(0.5 + 1.6 * (faded - 0.5 + wander), 0, 1)
+    return Patch(patch.window, sharper.astype(np.float32))
+
+
+def lay(
+    image: NDArray[np.float32],
+    patch: Patch,
+    material: Material,
+    colour: NDArray[np.float32],
+    rows: Rows | None,
+    direction: float,
+    frame: Frame,
+    noise: Noise,
+    rng: np.random.Generator,
+) -> None:
+    """Blend a material into `image` (rows, cols, 3) where `patch` covers it."""
+    which = int(rng.integers(2))
+    window = patch.window
+    origin = (frame.left + window[1].start * frame.pixel, frame.top - window[0].start * frame.pixel)
+    _lay(
+        image[window],
+        patch.cover,
+        colour,
+        linear(material.second) * np.float32(rng.uniform(0.8, 1.2)),
+        np.float32(material.share * rng.uniform(0.3, 1.8)),
+        noise.at(GRAIN_M)[window],
+        noise.at(PEBBLE_M, which)[window],
+        noise.at(SPOT_M, which)[window],
+        noise.at(PATCH_M, which)[window],
+        noise.at(DRIFT_M, which)[window],
+        2 * np.array([material.grain, material.pebble, material.spot, material.patch, material.drift], np.float32),
+        row_numbers(rows, direction, rng),
+        np.array([origin[0], origin[1], frame.pixel], np.float32),
+    )
+
+
+def row_numbers(rows: Rows | None, direction: float, rng: np.random.Generator) -> NDArray[np.float32]:
+    """Flatten the laying pattern for the compiled loop; length 0 says there is none."""
+    if rows is None:
+        return np.zeros(8, np.float32)
+    scale = rng.uniform(0.85, 1.2)
+    turn = (np.cos(direction), np.sin(direction))
+    size = (rows.length * scale, rows.width * scale)
+    return np.array([*size, rows.joint, rows.joint_tone, rows.bond, 2 * rows.vary, *turn], np.float32)
+
+
+@numba.njit(cache=True)
+def _lay(image, cover, first, second, share, grain, pebble, spot, patch, drift, weights, rows, place):  # type: ignore[no-untyped-def]
+    height, width = cover.shape
+    pixel = place[2]
+    for r in range(height):
+        y = place[1] - (r + np.float32(0.5)) * pixel
+        for c in range(width):
+            alpha = cover[r, c]
+            if alpha <= 0:
+                continue
+            mottle = pebble[r, c] * np.float32(0.25) + spot[r, c] * np.float32(0.5) + patch[r, c] * np.float32(0.6)
+            mix = min(max(share * np.float32(1.6) + np.float32(0.35) * mottle * min(share * 3, np.float32(1)), np.float32(0)), np.float32(1))
+            tone = (
+                1
+                + weights[0] * grain[r, c]
+                + weights[1] * pebble[r, c]
+                + weights[2] * spot[r, c]
+                + weights[3] * patch[r, c]
+                + weights[4] * drift[r, c]
+            )
+            if rows[0] > 0:
+                tone *= _unit_tone(place[0] + (c + np.float32(0.5)) * pixel, y, rows, pixel)
+            tone = max(tone, np.float32(0.25))
+            for k in range(3):
+                value = (first[k] + mix * (second[k] - first[k])) * tone
+                image[r, c, k] += alpha * (value - image[r, c, k])
+
+
+@numba.njit(cache=True)
+def _unit_tone(x, y, rows, pixel):  # type: ignore[no-untyped-def]
+    """Brightness of the unit or joint at a place; joints narrower than a pixel dim it by their share."""
+    length, width, joint = rows[0], rows[1], rows[2]
+    u = x * rows[6] + y * rows[7]
+    v = (y * rows[6] - x * rows[7]) / width
+    row = np.floor(v)
+    u = u / length + rows[4] * (row % 2)
+    unit = np.floor(u)
+    fine = min(width / (2 * pixel), np.float32(1))
+    tone = 1 + rows[5] * fine * _hash(unit, row)
+    gap = min(min(u - unit, unit + 1 - u) * length, min(v - row, row + 1 - v) * width)
+    reach = np.float32(0.5) * (joint + pixel)
+    if joint > 0 and gap < reach:
+        inside = min((reach - gap) / pixel, min(joint / pixel, np.float32(1)))
+        tone *= 1 - (1 - rows[3]) * inside * fine
+    return tone
+
+
+@numba.njit(cache=True)
+def _hash(a, b):  # type: ignore[no-untyped-def]
+    """Return a number in -1.7..1.7 that looks random, from two whole numbers."""
+    mixed = (np.int64(a) * 73856093) ^ (np.int64(b) * 19349663)
+    mixed = (mixed ^ (mixed >> 13)) * 1274126177
+    return np.float32((mixed >> 8) & 0xFFFF) * np.float32(3.4 / 65535) - np.float32(1.7)

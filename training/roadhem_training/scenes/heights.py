@@ -1,0 +1,82 @@
+"""Heights: the ground with its curbs, what stands on it, and the raster a height sensor makes of them."""
+
+from __future__ import annotations
+
+import cv2
+import numpy as np
+from numpy.typing import NDArray
+
+from roadhem_training.scenes.coverage import Frame, cover_area
+from roadhem_training.scenes.distance import SignedDistance
+from roadhem_training.scenes.flight import Flight
+from roadhem_training.scenes.noise import DRIFT_M, FIELD_M, Noise
+from roadhem_training.scenes.world import World
+
+STEP_REACH_M = 1.0
+"""From the height at the curb the ground goes over to the relief of its cover within this distance."""
+
+
+def ground_height(world: World, distance: SignedDistance, frame: Frame, noise: Noise) -> NDArray[np.float32]:
+    """Height of the bare ground at pixel centres: (rows, cols) float32 metres."""
+    x = (np.arange(frame.cols, dtype=np.float32) + 0.5) * frame.pixel
+    y = frame.top - (np.arange(frame.rows, dtype=np.float32)[:, None] + 0.5) * frame.pixel
+    height = (world.slope[0] * x + world.slope[1] * y).astype(np.float32)
+    height += 0.15 * noise.at(FIELD_M) + 0.02 * noise.at(DRIFT_M)
+    relief = np.zeros_like(height)
+    for cover in world.ground:
+        patch = cover_area(cover.area, frame)
+        if patch is not None:
+            relief[patch.window] += patch.cover * (np.float32(cover.relief) - relief[patch.window])
+    sdf, line = distance.sdf, distance.nearest.line_index
+    steps = np.array([edge.height for edge in world.edges] + [0.0], np.float32)[line]
+    far = np.where(line >= 0, np.clip(sdf / STEP_REACH_M, 0, 1), 1).astype(np.float32)
+    outside = np.clip(0.5 + sdf / frame.pixel, 0, 1)
+    rise = np.where(sdf > -0.5 * frame.pixel, steps + far * (relief - steps), 0) * outside
+    crown = world.crossfall * np.clip(-sdf, 0, 2.5)
+    return (height + rise + crown).astype(np.float32)
+
+
+def sense_height(
+    world: World, ground: NDArray[np.float32], frame: Frame, flight: Flight, rng: np.random.Generator
+) -> NDArray[np.float32]:
+    """Return what a height sensor gives: (rows, cols) float32 metres, NaN in holes, bilinear from its own cells."""
+    if flight.has("height_missing"):
+        return np.full(ground.shape, np.nan, np.float32)
+    cell = float(rng.choice([0.25, 0.25, 0.5, 0.5, 1.0]))
+    count = max(round(frame.rows * frame.pixel / cell), 2)
+    coarse = Frame(count, count, frame.rows * frame.pixel / count, frame.left, frame.top)
+    height = cv2.resize(ground, (count, count), interpolation=cv2.INTER_AREA)
+    _stand_up(height, world, coarse, flight)
+    height += rng.normal(0, rng.uniform(0.01, 0.04) * (0.5 / cell) ** 0.5, height.shape).astype(np.float32)
+    holes = rng.random(height.shape, np.float32) < rng.choice([0.0, 0.0, 0.002, 0.02])
+    if rng.random() < 0.2:
+        holes |= _blots(height.shape, rng)
+    wide = cv2.resize(height, (frame.cols, frame.rows), interpolation=cv2.INTER_LINEAR)
+    gone = cv2.resize(holes.astype(np.uint8), (frame.cols, frame.rows), interpolation=cv2.INTER_NEAREST)
+    wide[gone > 0] = np.nan
+    return wide
+
+
+def _stand_up(height: NDArray[np.float32], world: World, coarse: Frame, flight: Flight) -> None:
+    """Put onto the height raster what the sensor's ground filter leaves in."""
+    for body in world.bodies:
+        left_in = flight.has("height_with_houses" if body.what in ("house", "hall") else "height_with_cars")
+        patch = cover_area(body.footprint, coarse) if left_in else None
+        if patch is not None:
+            height[patch.window] += (patch.cover > 0.5) * np.float32(body.top)
+    if not flight.has("height_with_crowns"):
+        return
+    for crown in world.crowns:
+        window = coarse.window([crown.x - crown.radius, crown.y - crown.radius, crown.x + crown.radius, crown.y + crown.radius])
+        if window is None:
+            continue
+        x = coarse.left + (np.arange(window[1].start, window[1].stop) + 0.5) * coarse.pixel - crown.x
+        y = coarse.top - (np.arange(window[0].start, window[0].stop)[:, None] + 0.5) * coarse.pixel - crown.y
+        dome = np.sqrt(np.clip(1 - (x * x + y * y) / crown.radius**2, 0, 1))
+        lifted = np.where(dome > 0, crown.height * (0.45 + 0.55 * dome), 0).astype(np.float32)
+        height[window] += lifted
+
+
+def _blots(shape: tuple[int, int], rng: np.random.Generator) -> NDArray[np.bool_]:
+    knots = rng.standard_normal((9, 9)).astype(np.float32)
+    return cv2.resize(knots, (shape[1], shape[0]), interpolation=cv2.INTER_CUBIC) > rng.uniform(1.3, 2.2)
