@@ -1,0 +1,56 @@
+"""From followed rows to a trace: direction, kinds, sight, spread, doubts."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from roadhem.tracing.follow import KIND, LEFT, RIGHT, SIGHT, SIGMA, X, Y
+from roadhem.tracing.result import Trace
+from roadhem.tracing.settings import Settings
+from roadhem.tracing.walk import Line, turned
+
+
+def oriented(line: Line) -> Line:
+    """Return the line with the drive-over surface on its left."""
+    if np.sum((line.rows[:, LEFT] - line.rows[:, RIGHT]) * spans(line.rows)) >= 0:
+        return line
+    return Line(turned(line.rows[::-1]), line.end_reason, line.start_reason, line.closed)
+
+
+def spans(rows: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Metres of line that each row stands for."""
+    lengths = np.hypot(*np.diff(rows[:, [X, Y]], axis=0).T)
+    return 0.5 * (np.append(lengths, 0.0) + np.insert(lengths, 0, 0.0))
+
+
+def classes(probabilities: NDArray[np.float64], at_m: NDArray[np.float64], half_m: float) -> NDArray[np.uint8]:
+    """Likeliest class along a line, averaged over a window; pieces shorter than half a window are absorbed."""
+    low = np.searchsorted(at_m, at_m - half_m)
+    high = np.searchsorted(at_m, at_m + half_m, side="right")
+    total = np.concatenate([np.zeros((1, probabilities.shape[1])), np.cumsum(probabilities, axis=0)])
+    chosen = np.argmax(total[high] - total[low], axis=1)
+    starts = np.flatnonzero(np.diff(chosen, prepend=-1))
+    ends = np.append(starts[1:], len(chosen))
+    for start, end in zip(starts[1:], ends[1:], strict=True):
+        if at_m[end - 1] - at_m[start] < half_m:
+            chosen[start:end] = chosen[start - 1]
+    return chosen.astype(np.uint8)
+
+
+def finish(line: Line, settings: Settings) -> Trace:
+    """Return the trace of a followed line."""
+    line = oriented(line)
+    rows = line.rows
+    if line.closed:
+        rows = np.concatenate([rows[:-1], rows[:1]])
+    at_m = np.concatenate([[0.0], np.cumsum(np.hypot(*np.diff(rows[:, [X, Y]], axis=0).T))])
+    return Trace(
+        points=rows[:, [X, Y]].copy(),
+        sigma=rows[:, SIGMA].copy(),
+        kind=classes(rows[:, KIND : KIND + 3], at_m, settings.attributes_m),
+        seen=classes(rows[:, SIGHT : SIGHT + 3], at_m, settings.attributes_m),
+        closed=line.closed,
+        start_reason=line.start_reason,
+        end_reason=line.end_reason,
+    )

@@ -1,0 +1,130 @@
+"""Tracing one seed: a pure function of frozen fields."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass
+from typing import Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+
+from roadhem.errors import RoadhemError
+from roadhem.tracing.finish import finish
+from roadhem.tracing.follow import X, Y
+from roadhem.tracing.place import canonical, first_fix
+from roadhem.tracing.result import Trace, Unplaced
+from roadhem.tracing.settings import SETTINGS, Settings
+from roadhem.tracing.sheet import Absent, FieldView, Sheet
+from roadhem.tracing.walk import Line, both_ways
+
+LIMIT_M = 2000.0
+
+
+@dataclass(frozen=True)
+class Missing:
+    """An attempt that needs pages which are not computed yet; load them and attempt again."""
+
+    pages: frozenset[tuple[int, int]]
+
+
+class Store(FieldView, Protocol):
+    """Fields that can be computed."""
+
+    def load(self, pages: Iterable[tuple[int, int]]) -> None:
+        """Compute these pages."""
+
+
+def attempt(
+    view: FieldView,
+    points: Sequence[tuple[float, float]],
+    *,
+    radius_m: float = 1.0,
+    limit_m: float = LIMIT_M,
+    settings: Settings = SETTINGS,
+) -> Trace | Unplaced | Missing:
+    """Trace the edge beside a seed, as far as the pages at hand allow.
+
+    Parameters
+    ----------
+    view : the fields.
+    points : grid metres; the seed, then the places the line is to be guided through, in order.
+    radius_m : metres around the seed within which the line passes.
+    limit_m : metres, the longest line.
+
+    Returns
+    -------
+    The trace; why there is none; or the pages without which neither can be told.
+    """
+    places = np.asarray(points, np.float64).reshape(-1, 2)
+    sheet = Sheet(view, places, limit_m + radius_m + 1.0)
+    try:
+        line = follow_seed(sheet, places[0], radius_m, limit_m, settings)
+    except Absent as absent:
+        return Missing(frozenset([absent.page]))
+    return line if isinstance(line, Unplaced) else finish(line, settings)
+
+
+def follow_seed(
+    sheet: Sheet, seed: NDArray[np.float64], radius_m: float, limit_m: float, settings: Settings
+) -> Line | Unplaced:
+    """Follow the line beside a seed from its canonical point, so that the seed's exact place does not matter."""
+    fix = first_fix(sheet, seed, radius_m, settings)
+    if isinstance(fix, Unplaced):
+        return fix
+    line = both_ways(sheet, fix, limit_m, settings)
+    for _ in range(3):
+        start = canonical(sheet, near_part(line, seed, settings), settings)
+        if start is None or np.array_equal(start[:2], fix[:2]):
+            break
+        fresh = both_ways(sheet, start, limit_m, settings)
+        if not passes(fresh, seed, radius_m):
+            break
+        line, fix = fresh, start
+    return line
+
+
+def near_part(line: Line, seed: NDArray[np.float64], settings: Settings) -> NDArray[np.float64]:
+    """Rows in which the canonical point is looked for: all, or those near the seed where the limit cut the line."""
+    if "length_limit" not in (line.start_reason, line.end_reason):
+        return line.rows
+    away = np.hypot(line.rows[:, X] - seed[0], line.rows[:, Y] - seed[1])
+    nearest = int(np.argmin(away))
+    steps = np.hypot(*np.diff(line.rows[:, [X, Y]], axis=0).T)
+    at_m = np.concatenate([[0.0], np.cumsum(steps)])
+    return line.rows[np.abs(at_m - at_m[nearest]) <= settings.around_m]
+
+
+def passes(line: Line, seed: NDArray[np.float64], radius_m: float) -> bool:
+    """Whether the line passes within the radius of the seed."""
+    a, b = line.rows[:-1, [X, Y]], line.rows[1:, [X, Y]]
+    along = b - a
+    share = np.sum((seed - a) * along, axis=1) / np.maximum(np.sum(along**2, axis=1), 1e-12)
+    foot = a + np.clip(share, 0.0, 1.0)[:, None] * along
+    return bool(np.min(np.hypot(*(foot - seed).T), initial=np.inf) <= radius_m)
+
+
+def trace_seed(
+    store: Store,
+    points: Sequence[tuple[float, float]],
+    *,
+    radius_m: float = 1.0,
+    limit_m: float = LIMIT_M,
+    settings: Settings = SETTINGS,
+) -> Trace | Unplaced:
+    """Trace the edge beside a seed, computing the fields it needs; parameters as `attempt`.
+
+    Raises
+    ------
+    RoadhemError
+        If the store cannot give a page that it was asked to load.
+    """
+    loaded: set[tuple[int, int]] = set()
+    while True:
+        result = attempt(store, points, radius_m=radius_m, limit_m=limit_m, settings=settings)
+        if not isinstance(result, Missing):
+            return result
+        if result.pages <= loaded:
+            raise RoadhemError("The fields do not fit the memory set for them; give them more.")
+        store.load(sorted(result.pages))
+        loaded |= result.pages
