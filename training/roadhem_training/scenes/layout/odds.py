@@ -1,0 +1,111 @@
+"""How often things occur and how large they are: the tables every module of the layout draws from.
+
+Sizes are metres. Cross-section values follow the handbook figures gathered for this project: travel lanes
+2.74–3.66 m, parking lanes 2.4–3.0 m, curb returns 1.5–15 m, curbs 0.06–0.20 m, gutters 0.3–0.6 m, curb ramps
+1.2–5 m, driveways 3–7 m (the last from memory). Shares are judgement, tuned by eye and by the statistics of real
+kerb outlines.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import TypeVar
+
+import numpy as np
+
+T = TypeVar("T")
+Span = tuple[float, float]
+
+STYLE_ODDS = {
+    "old_town": 0.4, "suburb": 0.38, "industry": 0.22,
+}  # fmt: skip
+
+CORNER_RADIUS_ODDS: Mapping[Span, float] = {
+    (0.0, 0.0): 0.10, (0.3, 1.5): 0.10, (1.5, 4.5): 0.28, (4.5, 8.0): 0.30, (8.0, 11.0): 0.14, (11.0, 15.0): 0.08,
+}  # fmt: skip
+CURB_HEIGHT: Span = (0.06, 0.20)
+LOWERED_HEIGHT: Span = (0.0, 0.04)
+GUTTER: Span = (0.3, 0.6)
+CURB_STONE: Span = (0.08, 0.30)
+DRIVEWAY: Span = (3.0, 7.0)
+RAMP: Span = (1.2, 5.0)
+GUTTER_ODDS = {"concrete": 0.5, "asphalt": 0.25, "setts": 0.25}
+STONE_TONE_ODDS: Mapping[Span, float] = {(0.3, 1.0): 0.5, (-0.1, 0.1): 0.25, (0.1, 0.3): 0.15, (-0.8, -0.2): 0.1}
+FOOTWAY_ODDS = {"pavers": 0.4, "asphalt": 0.25, "concrete": 0.25, "setts": 0.05, "gravel": 0.05}
+VERGE_ODDS = {"grass": 0.65, "planting": 0.12, "soil": 0.13, "setts": 0.10}
+
+
+@dataclass(frozen=True)
+class StreetOdds:
+    """What the streets of a style look like.
+
+    Attributes
+    ----------
+    block : shortest side of a block before it is split again; skew : standard deviation of split angles, radians.
+    warp : share of places with curved streets; crossing : share of splits that make a four-leg crossing.
+    width : kerb to kerb, by rank; surface : materials of the carriageway.
+    """
+
+    block: Span
+    skew: float
+    warp: float
+    crossing: float
+    width: Mapping[str, Span]
+    surface: Mapping[str, float]
+    gutter: float
+    stone: float
+    verge: float
+    footway: float
+    footway_width: Span
+    median: float
+    parking: float
+    marked: float
+    driveway_every: Span
+
+
+STREETS: Mapping[str, StreetOdds] = {
+    "old_town": StreetOdds(
+        block=(30, 52), skew=0.16, warp=0.35, crossing=0.45,
+        width={"main": (9, 16), "street": (5.5, 9.5), "alley": (3.2, 5.5)},
+        surface={"asphalt": 0.72, "setts": 0.22, "concrete": 0.06},
+        gutter=0.4, stone=0.8, verge=0.15, footway=0.96, footway_width=(1.2, 4.0),
+        median=0.25, parking=0.6, marked=0.6, driveway_every=(25, 60),
+    ),
+    "suburb": StreetOdds(
+        block=(40, 68), skew=0.10, warp=0.7, crossing=0.3,
+        width={"main": (9, 14), "street": (6, 11), "alley": (3.5, 6)},
+        surface={"asphalt": 0.86, "concrete": 0.10, "setts": 0.04},
+        gutter=0.6, stone=0.65, verge=0.5, footway=0.75, footway_width=(1.2, 2.2),
+        median=0.15, parking=0.4, marked=0.45, driveway_every=(12, 28),
+    ),
+    "industry": StreetOdds(
+        block=(55, 90), skew=0.06, warp=0.3, crossing=0.4,
+        width={"main": (10, 18), "street": (7, 12), "alley": (4.5, 8)},
+        surface={"asphalt": 0.75, "concrete": 0.25},
+        gutter=0.4, stone=0.6, verge=0.5, footway=0.55, footway_width=(1.4, 2.5),
+        median=0.25, parking=0.35, marked=0.65, driveway_every=(25, 60),
+    ),
+}  # fmt: skip
+
+
+def chance(rng: np.random.Generator, share: float) -> bool:
+    """Whether something that happens with probability `share` happens."""
+    return bool(rng.random() < share)
+
+
+def between(rng: np.random.Generator, span: Span) -> float:
+    """A number drawn evenly from `span`."""
+    return float(rng.uniform(*span))
+
+
+def pick(rng: np.random.Generator, odds: Mapping[T, float]) -> T:
+    """A key of `odds`, drawn by weight."""
+    keys = list(odds)
+    weights = np.fromiter(odds.values(), dtype=float)
+    return keys[int(rng.choice(len(keys), p=weights / weights.sum()))]
+
+
+def pick_between(rng: np.random.Generator, odds: Mapping[Span, float]) -> float:
+    """A number drawn evenly from a span that was itself drawn by weight."""
+    return between(rng, pick(rng, odds))

@@ -1,0 +1,148 @@
+"""Street networks of towns: splitting land into blocks, bending it, and giving each street its cross-section."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+
+import numpy as np
+import shapely
+from numpy.typing import NDArray
+from shapely.geometry import LineString, Polygon, box
+from shapely.ops import split
+
+from roadhem_training.scenes.layout import odds
+from roadhem_training.scenes.layout.alignment import Alignment
+from roadhem_training.scenes.layout.odds import StreetOdds, between, chance, pick, pick_between
+from roadhem_training.scenes.layout.plan import Edging, Road
+
+Rng = np.random.Generator
+Axis = tuple[LineString, str]
+
+
+def street_axes(rng: Rng, size: float, reach: float, rules: StreetOdds) -> list[Axis]:
+    """Axes with their rank ("main", "street", "alley") that cover a frame of `size` metres and `reach` beyond it."""
+    extent = max(size + 2 * reach, 2.6 * rules.block[1])
+    land = shapely.affinity.rotate(box(-extent, -extent, extent, extent), rng.uniform(0, 90), origin=(0, 0))
+    axes: list[Axis] = []
+    _divide(rng, land, 0, rules, axes)
+    if chance(rng, rules.warp):
+        bend = _bend(rng)
+        axes = [(_apply(bend, line), rank) for line, rank in axes]
+    x, y = _focus(rng, axes, extent, size)
+    axes = [(shapely.affinity.translate(line, 0.5 * size - x, 0.5 * size - y), rank) for line, rank in axes]
+    window = box(-reach, -reach, size + reach, size + reach)
+    return [(line, rank) for line, rank in axes if line.intersects(window)]
+
+
+def _divide(rng: Rng, land: Polygon, depth: int, rules: StreetOdds, axes: list[Axis]) -> None:
+    corners = shapely.get_coordinates(land.minimum_rotated_rectangle)[:3]
+    u, v = corners[1] - corners[0], corners[2] - corners[1]
+    lu, lv = float(np.hypot(*u)), float(np.hypot(*v))
+    if lu < lv:
+        u, v, lu, lv = v, u, lv, lu
+    if lu < between(rng, rules.block) * 1.75:
+        return
+    middle = np.array(land.centroid.coords[0]) + (u / lu) * lu * rng.uniform(-0.14, 0.14)
+    rank = "main" if lu > 5 * rules.block[1] or depth < 1 else pick(rng, {"street": 0.8, "alley": 0.2})
+    cuts = [_cut(land, middle, math.atan2(v[1], v[0]) + rng.normal(0, rules.skew))]
+    if lv > rules.block[0] * 1.7 and chance(rng, rules.crossing):
+        cuts.append(_cut(land, middle, math.atan2(u[1], u[0]) + rng.normal(0, rules.skew)))
+    pieces = [land]
+    for cut in cuts:
+        axes.append((cut, rank))
+        pieces = [q for p in pieces for q in split(p, shapely.affinity.scale(cut, 1.01, 1.01)).geoms]
+        rank = "street"
+    for piece in pieces:
+        _divide(rng, piece, depth + 1, rules, axes)
+
+
+def _cut(land: Polygon, at: NDArray[np.float64], angle: float) -> LineString:
+    d = 4.0 * math.sqrt(land.area) * np.array([math.cos(angle), math.sin(angle)])
+    line = LineString([at - d, at + d]).intersection(land)
+    return line if isinstance(line, LineString) else max(line.geoms, key=lambda g: g.length)
+
+
+def _bend(rng: Rng) -> Callable[[NDArray[np.float64]], NDArray[np.float64]]:
+    """A smooth map of the plane; bends have radii of tens to hundreds of metres."""
+    waves = []
+    for _ in range(3):
+        length, angle = rng.uniform(90, 320), rng.uniform(0, 2 * math.pi)
+        strength = rng.uniform(0.1, 1.0) * (length / (2 * math.pi)) ** 2 / rng.uniform(60, 200)
+        waves.append((length, angle, rng.uniform(0, 2 * math.pi), min(strength, 0.055 * length)))
+
+    def bend(xy: NDArray[np.float64]) -> NDArray[np.float64]:
+        out = xy.copy()
+        for length, angle, phase, strength in waves:
+            along = xy @ [math.cos(angle), math.sin(angle)]
+            push = strength * np.sin(2 * math.pi * along / length + phase)
+            out += push[:, None] * [-math.sin(angle), math.cos(angle)]
+        return out
+
+    return bend
+
+
+def _apply(bend: Callable[[NDArray[np.float64]], NDArray[np.float64]], line: LineString) -> LineString:
+    dense = shapely.get_coordinates(shapely.segmentize(line, 0.8))
+    return LineString(bend(dense)).simplify(0.001)
+
+
+def _focus(rng: Rng, axes: list[Axis], extent: float, size: float) -> tuple[float, float]:
+    """Where to put the frame's middle: near a street, in small frames nearly always at a junction."""
+    ends = np.array([p for line, _ in axes for p in (line.coords[0], line.coords[-1])])
+    near = ends[np.hypot(*ends.T) < 0.9 * extent - 0.5 * size] if len(ends) else ends
+    if not len(near):
+        return 0.0, 0.0
+    spot = near[rng.integers(len(near))]
+    return tuple(spot + rng.normal(0, 0.12 * size, 2))
+
+
+def dress(rng: Rng, axes: list[Axis], rules: StreetOdds) -> list[Road]:
+    """Give every axis a carriageway, lanes and edgings; a place keeps to one family of kerbs and footways."""
+    family = _family(rng, rules)
+    roads = []
+    for line, rank in axes:
+        width = round(between(rng, rules.width[rank]), 2)
+        oneway = width < 5.0 or chance(rng, 0.12)
+        lanes = max(1 if oneway else 2, int(width // 3.1) if rank == "main" else (1 if width < 4.8 else 2))
+        roads.append(
+            Road(
+                axis=Alignment(shapely.get_coordinates(line)), width=width, lanes=lanes, rank=rank,
+                right=edging(rng, rules, family), left=edging(rng, rules, family),
+                material=pick(rng, rules.surface) if chance(rng, 0.35) else family.surface,
+                tone=float(np.clip(rng.normal(0, 0.45), -1, 1)), oneway=oneway,
+                parking=(chance(rng, rules.parking), chance(rng, rules.parking)) if width > 6 else (False, False),
+                marked=chance(rng, rules.marked) and width > 4.8, direction=rng.uniform(0, math.pi),
+            )
+        )  # fmt: skip
+    return roads
+
+
+class _Family:
+    """What the streets of one place have in common."""
+
+    def __init__(self, rng: Rng, rules: StreetOdds):
+        self.surface = pick(rng, rules.surface)
+        self.gutter = between(rng, odds.GUTTER) if chance(rng, rules.gutter) else 0.0
+        self.gutter_material = pick(rng, odds.GUTTER_ODDS)
+        self.stone = between(rng, odds.CURB_STONE) if chance(rng, rules.stone) else 0.0
+        self.stone_tone = pick_between(rng, odds.STONE_TONE_ODDS)
+        self.footway_material = pick(rng, odds.FOOTWAY_ODDS)
+        self.verge_material = pick(rng, odds.VERGE_ODDS)
+        self.height = between(rng, odds.CURB_HEIGHT)
+
+
+def _family(rng: Rng, rules: StreetOdds) -> _Family:
+    return _Family(rng, rules)
+
+
+def edging(rng: Rng, rules: StreetOdds, family: _Family) -> Edging:
+    """One side of a street, mostly as its family has it."""
+    own = _Family(rng, rules) if chance(rng, 0.25) else family
+    footway = between(rng, rules.footway_width) if chance(rng, rules.footway) else 0.0
+    return Edging(
+        kind="raised", height=round(own.height, 3), gutter=own.gutter, gutter_material=own.gutter_material,
+        stone=own.stone, stone_tone=own.stone_tone,
+        verge=rng.uniform(0.5, 3.0) if chance(rng, rules.verge) else 0.0, verge_material=own.verge_material,
+        footway=footway, footway_material=own.footway_material,
+    )  # fmt: skip
