@@ -1,0 +1,157 @@
+"""The field store: pages of quantised fields, computed where asked and kept under a memory bound."""
+
+from __future__ import annotations
+
+import threading
+from collections import OrderedDict
+from collections.abc import Iterable, Iterator, Sequence
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
+
+import numpy as np
+import onnxruntime
+from numpy.typing import NDArray
+
+from roadhem.fields.inputs import RELIEF_REACH, relief, stack_inputs
+from roadhem.fields.layout import CHANNELS, COVER, COVER_OUTSIDE, COVER_VALID, NET_STRIDE
+from roadhem.fields.model import Model
+from roadhem.fields.quantise import quantise
+from roadhem.tiles.mosaic import Mosaic
+
+PAGE = 256
+"""Cells along a side of a page."""
+
+PAGE_PIXELS = PAGE * NET_STRIDE
+"""Working pixels along a side of a page."""
+
+PAGE_BYTES = PAGE * PAGE * CHANNELS * 2
+
+Place = tuple[int, int]
+"""(p, q) of a page or block: rows of pages southward, columns eastward."""
+
+Page = NDArray[np.int16]
+
+
+@dataclass(frozen=True)
+class _Prepared:
+    """What one run of the net needs: its place, the net's input, and the cover of its cells without the halo."""
+
+    block: Place
+    inputs: NDArray[np.float32]
+    cover: NDArray[np.uint8]
+
+
+class FieldStore:
+    """Fields of a mosaic by pages of 256 x 256 cells (51.2 m).
+
+    Page (p, q) holds cells i in [p * 256, (p + 1) * 256) and j likewise of q. A page is the same to the last bit
+    whatever block it is computed in, whenever, and whatever tiles lie elsewhere.
+
+    Parameters
+    ----------
+    mosaic, model : what to look at, and with which net.
+    threads : threads of the net.
+    cache_mb : memory for pages; the pages of a single load are all returned, even past it.
+    pages_per_block : pages along a side of the block that one run of the net computes.
+    """
+
+    def __init__(
+        self, mosaic: Mosaic, model: Model, *, threads: int = 1, cache_mb: float = 256, pages_per_block: int = 1
+    ) -> None:
+        self.mosaic, self.model = mosaic, model
+        self._pages: OrderedDict[Place, Page] = OrderedDict()
+        self._most = max(1, int(cache_mb * 2**20) // PAGE_BYTES)
+        self._per_block = pages_per_block
+        self._side = pages_per_block * PAGE_PIXELS + 2 * model.halo
+        self._threads = threads
+        self._session: onnxruntime.InferenceSession | None = None
+        self._reader = ThreadPoolExecutor(1, thread_name_prefix="roadhem-read")
+        self._lock = threading.RLock()
+
+    def page(self, p: int, q: int) -> Page:
+        """Return page (p, q), (256, 256, CHANNELS) int16, read-only; it is computed if need be."""
+        return self.load([(p, q)])[p, q]
+
+    def ready(self, p: int, q: int) -> bool:
+        """Tell whether page (p, q) is at hand without a run of the net."""
+        return (p, q) in self._pages or not self._holds_data((p, q))
+
+    def load(self, pages: Iterable[Place]) -> dict[Place, Page]:
+        """Return pages, computing those that are missing; the next block is read while the net works on this one."""
+        with self._lock:
+            wanted = sorted(set(pages))
+            found = {place: page for place in wanted if (page := self._at_hand(place)) is not None}
+            blocks = sorted({self._block_of(place) for place in wanted if place not in found})
+            for prepared in self._prepared(blocks):
+                for place, page in self._run(prepared):
+                    if place in wanted:
+                        found[place] = page
+                    self._keep(place, page)
+            return found
+
+    def _at_hand(self, place: Place) -> Page | None:
+        if place in self._pages:
+            self._pages.move_to_end(place)
+            return self._pages[place]
+        return None if self._holds_data(place) else BLANK
+
+    def _keep(self, place: Place, page: Page) -> None:
+        self._pages[place] = page
+        self._pages.move_to_end(place)
+        while len(self._pages) > self._most:
+            self._pages.popitem(last=False)
+
+    def _holds_data(self, place: Place) -> bool:
+        return self.mosaic.has_data(place[0] * PAGE_PIXELS, place[1] * PAGE_PIXELS, PAGE_PIXELS, PAGE_PIXELS)
+
+    def _block_of(self, place: Place) -> Place:
+        return place[0] // self._per_block, place[1] // self._per_block
+
+    def _prepared(self, blocks: Sequence[Place]) -> Iterator[_Prepared]:
+        """Yield blocks ready for the net, one read ahead."""
+        ahead = [self._reader.submit(self._prepare, block) for block in blocks[:1]]
+        for following in [*blocks[1:], None]:
+            if not ahead:
+                return
+            prepared = ahead.pop().result()
+            if following is not None:
+                ahead.append(self._reader.submit(self._prepare, following))
+            yield prepared
+
+    def _prepare(self, block: Place) -> _Prepared:
+        side, halo = self._side, self.model.halo
+        row, col = (index * self._per_block * PAGE_PIXELS - halo for index in block)
+        patch = self.mosaic.read(row, col, side, side)
+        wider = side + 2 * RELIEF_REACH
+        height = self.mosaic.read_height(row - RELIEF_REACH, col - RELIEF_REACH, wider, wider)
+        reliefs = (None, None) if height is None else relief(height)
+        inputs = stack_inputs(patch.colour, patch.cover == COVER_VALID, *reliefs)
+        core = patch.cover[halo : side - halo, halo : side - halo]
+        cells = core.reshape(core.shape[0] // NET_STRIDE, NET_STRIDE, -1, NET_STRIDE).min(axis=(1, 3))
+        return _Prepared(block, inputs[None], cells)
+
+    def _run(self, prepared: _Prepared) -> Iterator[tuple[Place, Page]]:
+        """Run the net on a block and yield its pages that hold data."""
+        if self._session is None:
+            self._session = self.model.session(self._side, self._side, self._threads)
+        (fields,) = self._session.run(["fields"], {"tiles": prepared.inputs})
+        margin = self.model.halo // NET_STRIDE
+        for i in range(self._per_block):
+            for j in range(self._per_block):
+                place = prepared.block[0] * self._per_block + i, prepared.block[1] * self._per_block + j
+                if self._holds_data(place):
+                    top, left = i * PAGE, j * PAGE
+                    cover = prepared.cover[top : top + PAGE, left : left + PAGE]
+                    part = fields[0, :, margin + top : margin + top + PAGE, margin + left : margin + left + PAGE]
+                    yield place, quantise(part, cover, self.model.calibration)
+
+
+def _blank() -> Page:
+    page = np.zeros((PAGE, PAGE, CHANNELS), np.int16)
+    page[..., COVER] = COVER_OUTSIDE
+    page.flags.writeable = False
+    return page
+
+
+BLANK = _blank()
+"""The page where there is no tile."""
