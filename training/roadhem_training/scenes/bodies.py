@@ -16,7 +16,7 @@ from roadhem_training.scenes.noise import GRAIN_M, PATCH_M, PEBBLE_M, SPOT_M, No
 from roadhem_training.scenes.vehicles import paint_vehicle
 from roadhem_training.scenes.world import Body
 
-TILES = ((158, 92, 70), (176, 108, 82), (132, 78, 64), (112, 84, 74), (92, 90, 92), (74, 74, 80), (140, 120, 108))
+TILES = ((150, 98, 80), (168, 118, 96), (128, 86, 74), (112, 90, 82), (98, 96, 97), (78, 78, 82), (140, 124, 114))
 FLATS = ((92, 92, 92), (136, 134, 130), (176, 173, 168), (204, 202, 198), (118, 112, 104), (150, 158, 164))
 PLAIN = {
     "wall": ((176, 168, 156), (150, 140, 130), (198, 190, 176), (146, 104, 86)),

@@ -8,7 +8,17 @@ from numpy.typing import NDArray
 
 from roadhem_training.scenes.flight import Flight
 
-GAMMA_STEPS = 4096
+GAMMA_STEPS, BRIGHTEST = 4096, 1.5
+"""Entries of the tone table and the light of its last one."""
+
+BRIGHT_PERCENT = 93
+"""Percentile of the light that exposure is set by."""
+
+HAZE = (0.42, 0.47, 0.54)
+"""Light of the air between camera and ground."""
+
+SHOULDER = 32
+"""Counts below white in which highlights are compressed."""
 COARSEST_M = 0.25
 """Coarsest pixel that a picture is taken with before it is resampled."""
 
@@ -50,26 +60,31 @@ def resample(light: NDArray[np.float32], pixel: float, rng: np.random.Generator)
 
 
 def tone_curve(light: NDArray[np.float32], flight: Flight, rng: np.random.Generator) -> NDArray[np.float32]:
-    """Exposure, white balance, haze, gamma and contrast: light to 0..255 float32."""
-    exposure = float(np.exp(rng.normal(0.0, 0.18)))
-    balance = np.exp(rng.normal(0, 0.045, 3))
-    table = np.empty((GAMMA_STEPS, 3), np.float32)
-    haze = rng.uniform(0.02, 0.16) if flight.has("haze") else 0.0
-    gamma = 2.2 * np.exp(rng.normal(0, 0.10))
-    contrast = rng.uniform(0.8, 1.3) * (1.3 if flight.has("stretched") else 1.0)
-    black = rng.uniform(-0.05, 0.05)
-    ramp = np.linspace(0, 1.5, GAMMA_STEPS)
+    """Exposure, white balance, haze, gamma, contrast and saturation: light to 0..255 float32."""
+    bright = float(np.percentile(light[::8, ::8, 1], BRIGHT_PERCENT))
+    exposure = float(np.clip(rng.uniform(0.45, 0.95) / max(bright, 1e-3), 0.7, 3.5))
+    warm, green = rng.normal(0, 0.035), rng.normal(0, 0.015)
+    balance = np.exp([warm, green, -warm])
+    haze = rng.uniform(0.03, 0.22) if flight.has("haze") else rng.uniform(0, 0.03)
+    gamma = 2.2 * np.exp(rng.normal(0, 0.08))
+    contrast = rng.uniform(0.75, 1.15) * (1.35 if flight.has("stretched") else 1.0)
+    lift = rng.normal(0.02, 0.03)
+    ramp = np.linspace(0, BRIGHTEST, GAMMA_STEPS)[:, None] * exposure * balance
+    value = ramp * (1 - haze) + haze * np.array(HAZE)
+    table = 255 * ((np.clip(value, 0, None) ** (1 / gamma) - 0.5) * contrast + 0.5 + lift)
+    knee = 255 - SHOULDER
+    table = np.where(table > knee, knee + SHOULDER * np.tanh((table - knee) / SHOULDER), table).astype(np.float32)
+    index = np.clip(light * np.float32((GAMMA_STEPS - 1) / BRIGHTEST), 0, GAMMA_STEPS - 1).astype(np.uint16)
+    image = np.empty_like(light)
     for k in range(3):
-        value = ramp * exposure * balance[k]
-        value = value * (1 - haze) + haze * (0.75, 0.85, 1.0)[k] * 0.6
-        bright = np.clip(value, 0, None) ** (1 / gamma)
-        table[:, k] = 255 * ((bright - 0.45) * contrast + 0.45 + black)
-    table = np.where(table > 225, 225 + 30 * np.tanh((table - 225) / 30), table)
-    index = np.clip(light * np.float32((GAMMA_STEPS - 1) / 1.5), 0, GAMMA_STEPS - 1).astype(np.uint16)
-    out = np.empty_like(light)
-    for k in range(3):
-        out[..., k] = table[index[..., k], k]
-    return out
+        image[..., k] = table[index[..., k], k]
+    return cv2.transform(image, saturation_matrix(rng.uniform(0.45, 1.05)))
+
+
+def saturation_matrix(amount: float) -> NDArray[np.float32]:
+    """Colour matrix (3, 3) that keeps brightness and multiplies saturation by `amount`."""
+    grey = np.tile(np.array([0.30, 0.59, 0.11]), (3, 1))
+    return (grey + amount * (np.eye(3) - grey)).astype(np.float32)
 
 
 def sharpen(image: NDArray[np.float32], rng: np.random.Generator) -> NDArray[np.float32]:

@@ -97,7 +97,7 @@ def _lay(image, cover, first, second, share, grain, pebble, spot, patch, drift, 
             alpha = cover[r, c]
             if alpha <= 0:
                 continue
-            mottle = pebble[r, c] * np.float32(0.25) + spot[r, c] * np.float32(0.5) + patch[r, c] * np.float32(0.6)
+            mottle = pebble[r, c] * np.float32(0.25) + spot[r, c] * np.float32(0.5) + patch[r, c] * np.float32(0.5)
             mix = min(max(share * np.float32(1.6) + np.float32(0.35) * mottle * min(share * 3, np.float32(1)), np.float32(0)), np.float32(1))
             tone = (
                 1
