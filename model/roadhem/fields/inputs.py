@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
+from numba import njit
 from numpy.typing import NDArray
 
 INPUTS = ("red", "green", "blue", "valid", "relief", "relief_valid")
@@ -32,23 +33,34 @@ def relief(height: NDArray[np.float32]) -> tuple[NDArray[np.float32], NDArray[np
     relief, valid : (H, W) float32 each; relief is 0 where valid is 0. Sums run in a fixed order, so that any window
         gives the same bits.
     """
-    reach = RELIEF_REACH
-    rows, cols = height.shape[0] - 2 * reach, height.shape[1] - 2 * reach
     known = np.isfinite(height)
     filled = np.where(known, height, np.float32(0)).astype(np.float32)
-    total = np.zeros((rows, cols), np.float32)
-    count = np.zeros((rows, cols), np.float32)
-    centre = filled[reach : reach + rows, reach : reach + cols]
-    centre_known = known[reach : reach + rows, reach : reach + cols]
-    for dr in RELIEF_TAPS:
-        for dc in RELIEF_TAPS:
-            window = np.s_[reach + dr : reach + dr + rows, reach + dc : reach + dc + cols]
-            total += np.where(known[window], filled[window] - centre, np.float32(0))
-            count += known[window]
-    above = -total / np.maximum(count, np.float32(1))
-    squeezed = above / (np.float32(RELIEF_SOFT_M) + np.abs(above))
-    valid = centre_known.astype(np.float32)
-    return (squeezed * valid).astype(np.float32), valid
+    shape = height.shape[0] - 2 * RELIEF_REACH, height.shape[1] - 2 * RELIEF_REACH
+    squeezed, valid = np.empty(shape, np.float32), np.empty(shape, np.float32)
+    _relief(filled, known.astype(np.float32), squeezed, valid)
+    return squeezed, valid
+
+
+@njit(cache=True, nogil=True)
+def _relief(filled, known, squeezed, valid):  # type: ignore[no-untyped-def]
+    rows, cols = valid.shape
+    total, count = np.empty(cols, np.float32), np.empty(cols, np.float32)
+    for r in range(rows):
+        total[:] = np.float32(0)
+        count[:] = np.float32(0)
+        centre = filled[RELIEF_REACH + r, RELIEF_REACH : RELIEF_REACH + cols]
+        for dr in RELIEF_TAPS:
+            for dc in RELIEF_TAPS:
+                left = RELIEF_REACH + dc
+                tap = filled[RELIEF_REACH + r + dr, left : left + cols]
+                there = known[RELIEF_REACH + r + dr, left : left + cols]
+                for c in range(cols):
+                    total[c] += (tap[c] - centre[c]) * there[c]
+                    count[c] += there[c]
+        for c in range(cols):
+            above = -total[c] / max(count[c], np.float32(1))
+            valid[r, c] = known[RELIEF_REACH + r, RELIEF_REACH + c]
+            squeezed[r, c] = above / (np.float32(RELIEF_SOFT_M) + abs(above)) * valid[r, c]
 
 
 def stack_inputs(
@@ -69,10 +81,12 @@ def stack_inputs(
     -------
     (6, H, W) float32, in the order of INPUTS.
     """
-    stacked = np.zeros((len(INPUTS), *valid.shape), np.float32)
-    stacked[:3] = (colour - np.float32(MEAN)) / np.float32(DEVIATION) * valid
+    stacked = np.empty((len(INPUTS), *valid.shape), np.float32)
+    np.subtract(colour, np.float32(MEAN), out=stacked[:3])
+    stacked[:3] /= np.float32(DEVIATION)
+    if not valid.all():
+        stacked[:3] *= valid
     stacked[3] = valid
-    if relief_ is not None and relief_valid is not None:
-        stacked[4] = relief_
-        stacked[5] = relief_valid
+    stacked[4] = 0 if relief_ is None else relief_
+    stacked[5] = 0 if relief_valid is None else relief_valid
     return stacked
