@@ -40,8 +40,6 @@ def sense_height(
     world: World, ground: NDArray[np.float32], frame: Frame, flight: Flight, rng: np.random.Generator
 ) -> NDArray[np.float32]:
     """Return what a height sensor gives: (rows, cols) float32 metres, NaN in holes, bilinear from its own cells."""
-    if flight.has("height_missing"):
-        return np.full(ground.shape, np.nan, np.float32)
     cell = float(rng.choice([0.25, 0.25, 0.5, 0.5, 1.0]))
     count = max(round(frame.rows * frame.pixel / cell), 2)
     coarse = Frame(count, count, frame.rows * frame.pixel / count, frame.left, frame.top)

@@ -14,9 +14,11 @@ from roadhem_training.scenes.flight import Flight, draw_flight
 from roadhem_training.scenes.ground import lay_ground
 from roadhem_training.scenes.heights import ground_height, sense_height
 from roadhem_training.scenes.light import cast_bodies, cast_crowns, dim_sky, light_up, shade_curbs
+from roadhem_training.scenes.litter import litter_edges
 from roadhem_training.scenes.markings import paint_markings
 from roadhem_training.scenes.noise import Noise
 from roadhem_training.scenes.scene import Scene
+from roadhem_training.scenes.wear import wear_paint, wear_surface
 from roadhem_training.scenes.world import World
 
 SHADED = 0.5
@@ -57,7 +59,10 @@ def render(world: World, seed: int, pixel: float = PIXEL_M, flight: Flight | Non
     ground = ground_height(world, distance, frame, noise)
 
     image = lay_ground(world, frame, noise, streams[1])
+    wear_surface(image, world, distance, frame, flight, noise, streams[1])
     paint_markings(image, world.paints, frame, noise, streams[1])
+    wear_paint(image, world, distance, frame, flight, streams[1])
+    litter_edges(image, world, distance, flight, noise, streams[1])
     large = [body for body in world.bodies if body.what not in VEHICLES]
     cars = [body for body in world.bodies if body.what in VEHICLES]
     dark = cast_bodies(large, frame, flight)
