@@ -2,14 +2,17 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import cv2
 import numpy as np
+from numpy.typing import NDArray
 
 from roadhem_training.scenes.bodies import VEHICLES, draw_bodies
 from roadhem_training.scenes.camera import take_picture
 from roadhem_training.scenes.coverage import Frame
 from roadhem_training.scenes.crowns import draw_crowns, in_season
-from roadhem_training.scenes.distance import signed_distance
+from roadhem_training.scenes.distance import SignedDistance, signed_distance
 from roadhem_training.scenes.flight import Flight, draw_flight
 from roadhem_training.scenes.ground import lay_ground
 from roadhem_training.scenes.heights import ground_height, sense_height
@@ -40,7 +43,24 @@ def make_scene(seed: int, size: int = 1024, pixel: float = PIXEL_M, style: str |
     return render(make_world(seed, size * pixel, style), seed, pixel)
 
 
-def render(world: World, seed: int, pixel: float = PIXEL_M, flight: Flight | None = None) -> Scene:
+@dataclass(frozen=True)
+class View:
+    """What light reaches the camera, before it takes the picture.
+
+    Attributes
+    ----------
+    light : (H, W, 3) float32, relative to white in full sun.
+    ground : (H, W) float32 height of the bare ground, metres.
+    shadow, hidden : (H, W) bool, as in `Scene`.
+    """
+
+    light: NDArray[np.float32]
+    ground: NDArray[np.float32]
+    shadow: NDArray[np.bool_]
+    hidden: NDArray[np.bool_]
+
+
+def render(world: World, seed: int, pixel: float = PIXEL_M) -> Scene:
     """Photograph a world and sense its heights.
 
     Parameters
@@ -48,35 +68,51 @@ def render(world: World, seed: int, pixel: float = PIXEL_M, flight: Flight | Non
     world : what is there.
     seed : draws the flight's conditions, textures and noise.
     pixel : metres.
-    flight : given conditions instead of drawn ones.
     """
     cv2.setNumThreads(1)
-    streams = [np.random.default_rng([seed, k]) for k in range(6)]
-    flight = flight or draw_flight(streams[0])
+    flight = draw_flight(np.random.default_rng([seed, 0]))
+    seen = view(world, flight, seed, pixel)
+    picture, valid = take_picture(seen.light, pixel, flight, np.random.default_rng([seed, 1]))
+    frame = Frame.of_size(world.size, pixel)
+    height = sense_height(world, seen.ground, frame, flight, np.random.default_rng([seed, 2]))
+    return Scene(world, pixel, picture, valid, height, seen.shadow, seen.hidden)
+
+
+def view(world: World, flight: Flight, seed: int, pixel: float = PIXEL_M) -> View:
+    """Light the world under a flight's sun and look down on it; `seed` draws textures and wear."""
     frame = Frame.of_size(world.size, pixel)
     noise = Noise(seed, frame)
     distance = signed_distance(world, pixel)
-    ground = ground_height(world, distance, frame, noise)
-
-    image = lay_ground(world, frame, noise, streams[1])
-    wear_surface(image, world, distance, frame, flight, noise, streams[1])
-    paint_markings(image, world.paints, frame, noise, streams[1])
-    wear_paint(image, world, distance, frame, flight, streams[1])
-    litter_edges(image, world, distance, flight, noise, streams[1])
-    large = [body for body in world.bodies if body.what not in VEHICLES]
+    image = _surface(world, distance, frame, flight, noise, np.random.default_rng([seed, 3]))
+    crowns = [in_season(crown, flight) for crown in world.crowns]
     cars = [body for body in world.bodies if body.what in VEHICLES]
-    dark = cast_bodies(large, frame, flight)
-    cast_crowns(dark, [in_season(crown, flight) for crown in world.crowns], frame, flight, noise)
+    dark = cast_bodies([body for body in world.bodies if body.what not in VEHICLES], frame, flight)
+    cast_crowns(dark, crowns, frame, flight, noise)
     above = dark.copy()
     np.maximum(dark, cast_bodies(cars, frame, flight), out=dark)
     shadow = (dark > SHADED) & (flight.sun > SHADED)
     sky = dim_sky(world.bodies, frame)
-    shade_curbs(dark, sky, world, distance, flight, pixel, streams[2])
+    shade_curbs(dark, sky, world, distance, flight, pixel, np.random.default_rng([seed, 4]))
     light_up(image, dark, sky, flight)
-
     hidden = np.zeros(dark.shape, bool)
-    draw_bodies(image, hidden, world.bodies, above, frame, flight, noise, streams[3])
-    draw_crowns(image, hidden, [in_season(crown, flight) for crown in world.crowns], frame, flight, noise, streams[3])
-    picture, valid = take_picture(image, pixel, flight, streams[4])
-    height = sense_height(world, ground, frame, flight, streams[5])
-    return Scene(world, pixel, picture, valid, height, shadow, hidden)
+    rng = np.random.default_rng([seed, 5])
+    draw_bodies(image, hidden, world.bodies, above, frame, flight, noise, rng)
+    draw_crowns(image, hidden, crowns, frame, flight, noise, rng)
+    return View(image, ground_height(world, distance, frame, noise), shadow, hidden)
+
+
+def _surface(
+    world: World,
+    distance: SignedDistance,
+    frame: Frame,
+    flight: Flight,
+    noise: Noise,
+    rng: np.random.Generator,
+) -> NDArray[np.float32]:
+    """Reflectance of the ground: covers, wear, paint, more wear, litter."""
+    image = lay_ground(world, frame, noise, rng)
+    wear_surface(image, world, distance, frame, flight, noise, rng)
+    paint_markings(image, world.paints, frame, noise, rng)
+    wear_paint(image, world, distance, frame, flight, rng)
+    litter_edges(image, world, distance, flight, noise, rng)
+    return image
