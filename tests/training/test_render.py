@@ -114,7 +114,9 @@ def test_lowered_curb_rises_to_the_footway():
 def with_house(lean: float = 0.0) -> tuple[World, Flight]:
     world = straight_world()
     world.bodies = [Body(box(10, 10, 18, 16), 6.0, "house")]
-    flight = replace(OVERCAST, sun=1.0, sun_azimuth=np.pi, sun_elevation=np.pi / 4, lean=(0.0, lean), lean_spread=1e-9)
+    flight = replace(
+        OVERCAST, sun=1.0, sun_azimuth=np.pi, sun_elevation=np.pi / 4, lean=(0.0, lean), lean_spread=1e-9
+    )
     return world, flight
 
 
