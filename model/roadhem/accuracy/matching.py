@@ -23,6 +23,8 @@ UNSCORED_REACH_M = 1.0
 """A line this close to a reference that is not scored (hidden, unsure) is no error."""
 SAMPLE_M = 0.10
 """Step of the lateral samples."""
+LEAST_GAP_M = 0.001
+"""Shorter unmatched pieces of the reference are rounding, not gaps."""
 GAUSS_NODES = np.array([0.5 - np.sqrt(3 / 20), 0.5, 0.5 + np.sqrt(3 / 20)])
 GAUSS_WEIGHTS = np.array([5, 8, 5]) / 18
 
@@ -138,7 +140,7 @@ def _in_areas(these: Segments, areas: Any) -> Spans:
     shapely.prepare(areas)
     cut = shapely.intersection(these.shapes, areas)
     parts, segment = shapely.get_parts(cut, return_index=True)
-    straight = shapely.get_type_id(parts) == shapely.GeometryType.LINESTRING
+    straight = shapely.length(parts) > 0
     parts, segment = parts[straight], segment[straight]
     ends = np.stack([shapely.get_coordinates(shapely.get_point(parts, place)) for place in (0, -1)], axis=1)
     along = np.sort(np.hypot(*np.moveaxis(ends - these.start[segment][:, None], -1, 0)), axis=1)
@@ -157,7 +159,8 @@ def _gaps(missed: Spans, truth: Segments) -> NDArray[np.float64]:
         & (missed.low[1:] <= 1e-9)
     )
     gap = np.cumsum(np.append(False, ~goes_on))
-    return np.asarray(np.bincount(gap, weights=missed.high - missed.low), dtype=np.float64)
+    length = np.bincount(gap, weights=missed.high - missed.low)
+    return np.asarray(length[length > LEAST_GAP_M], dtype=np.float64)
 
 
 def _rms(spans: Spans, found: Segments, truth: Segments) -> float | None:

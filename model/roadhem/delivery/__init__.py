@@ -1,1 +1,1 @@
-"""Delivery: pictures and reports that a person can judge at a glance."""
+"""Delivery: pictures and pages that people can judge lines by."""

@@ -1,1 +1,1 @@
-"""Jobs: whole tile sets from start to finish, resumable, with atomic outputs."""
+"""Jobs: whole runs over sets of tiles, unattended."""

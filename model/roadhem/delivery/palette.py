@@ -1,0 +1,29 @@
+"""Colours of pictures: five steps of spread that people with any colour vision tell apart on photographs."""
+
+from __future__ import annotations
+
+SPREAD_LIMITS_M = (0.03, 0.06, 0.12, 0.25)
+"""Upper limits of the steps but the last."""
+
+SPREAD_COLOURS = ("#39d5ff", "#f7f35a", "#ff9f1c", "#e5322d", "#8d1bb5")
+"""From sure to unsure."""
+
+CASING = "#101418"
+"""Drawn under lines and marks, so that they stand out on light and dark ground."""
+PAPER = "#fbfaf7"
+INK = "#20262c"
+FAINT = "#6c747c"
+UNPLACED = "#ffffff"
+DOUBT = "#ffffff"
+
+
+def step_of(spread_m: float) -> int:
+    """Return the step of a spread, 0 for the surest."""
+    return sum(spread_m > limit for limit in SPREAD_LIMITS_M)
+
+
+def step_names() -> list[str]:
+    """Return the steps in words."""
+    limits = [f"{limit * 100:g}" for limit in SPREAD_LIMITS_M]
+    between = [f"{low}–{high} cm" for low, high in zip(limits, limits[1:], strict=False)]
+    return [f"up to {limits[0]} cm", *between, f"over {limits[-1]} cm"]
