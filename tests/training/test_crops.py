@@ -8,6 +8,7 @@ import math
 import numpy as np
 import pytest
 from numpy.typing import NDArray
+
 from roadhem_training.crops import turned
 
 CELLS = 8
@@ -22,7 +23,7 @@ def line_fields(x0: float, y0: float, theta: float) -> dict[str, NDArray[np.gene
     return {"offset": np.stack([-math.sin(theta) * distance, math.cos(theta) * distance]), "axis": axis}
 
 
-@pytest.mark.parametrize(("quarters", "mirror"), itertools.product(range(4), (False, True)))
+@pytest.mark.parametrize(("quarters", "mirror"), list(itertools.product(range(4), (False, True))))
 def test_turning_fields_equals_turning_the_line(quarters: int, mirror: bool) -> None:
     """Should give the fields of the turned line, computed anew from its definition ([built])."""
     x, y, theta = 0.7, -0.4, 0.3
