@@ -33,10 +33,24 @@ Page = NDArray[np.int16]
 
 
 @dataclass(frozen=True)
-class _Prepared:
-    """What one run of the net needs: its place, the net's input, and the cover of its cells without the halo."""
+class _Block:
+    """Pages that one run of the net computes: `side` x `side` of them from page (p, q)."""
 
-    block: Place
+    p: int
+    q: int
+    side: int
+
+    @property
+    def pages(self) -> list[Place]:
+        """All pages of the block, row by row."""
+        return [(self.p + i, self.q + j) for i in range(self.side) for j in range(self.side)]
+
+
+@dataclass(frozen=True)
+class _Prepared:
+    """What one run of the net needs: the net's input, and the cover of the block's cells without the halo."""
+
+    block: _Block
     inputs: NDArray[np.float32]
     cover: NDArray[np.uint8]
 
@@ -52,19 +66,19 @@ class FieldStore:
     mosaic, model : what to look at, and with which net.
     threads : threads of the net.
     cache_mb : memory for pages; the pages of a single load are all returned, even past it.
-    pages_per_block : pages along a side of the block that one run of the net computes.
+    pages_per_block : pages along a side of the largest block that one run of the net computes; it is used where
+        that costs less than the missing pages one by one.
     """
 
     def __init__(
-        self, mosaic: Mosaic, model: Model, *, threads: int = 1, cache_mb: float = 256, pages_per_block: int = 1
+        self, mosaic: Mosaic, model: Model, *, threads: int = 1, cache_mb: float = 256, pages_per_block: int = 2
     ) -> None:
         self.mosaic, self.model = mosaic, model
         self._pages: OrderedDict[Place, Page] = OrderedDict()
         self._most = max(1, int(cache_mb * 2**20) // PAGE_BYTES)
         self._per_block = pages_per_block
-        self._side = pages_per_block * PAGE_PIXELS + 2 * model.halo
         self._threads = threads
-        self._session: onnxruntime.InferenceSession | None = None
+        self._sessions: dict[int, onnxruntime.InferenceSession] = {}
         self._reader = ThreadPoolExecutor(1, thread_name_prefix="roadhem-read")
         self._lock = threading.RLock()
 
@@ -81,8 +95,8 @@ class FieldStore:
         with self._lock:
             wanted = sorted(set(pages))
             found = {place: page for place in wanted if (page := self._at_hand(place)) is not None}
-            blocks = sorted({self._block_of(place) for place in wanted if place not in found})
-            for prepared in self._prepared(blocks):
+            missing = [place for place in wanted if place not in found]
+            for prepared in self._prepared(self._blocks(missing)):
                 for place, page in self._run(prepared):
                     if place in wanted:
                         found[place] = page
@@ -104,10 +118,25 @@ class FieldStore:
     def _holds_data(self, place: Place) -> bool:
         return self.mosaic.has_data(place[0] * PAGE_PIXELS, place[1] * PAGE_PIXELS, PAGE_PIXELS, PAGE_PIXELS)
 
-    def _block_of(self, place: Place) -> Place:
-        return place[0] // self._per_block, place[1] // self._per_block
+    def _side(self, pages: int) -> int:
+        """Working pixels along a block of `pages` pages and its halo."""
+        return pages * PAGE_PIXELS + 2 * self.model.halo
 
-    def _prepared(self, blocks: Sequence[Place]) -> Iterator[_Prepared]:
+    def _blocks(self, missing: Iterable[Place]) -> list[_Block]:
+        """Cover pages by blocks: a large one where it costs less than its missing pages one by one."""
+        side = self._per_block
+        groups: dict[Place, list[Place]] = {}
+        for p, q in missing:
+            groups.setdefault((p // side * side, q // side * side), []).append((p, q))
+        blocks: list[_Block] = []
+        for corner, places in sorted(groups.items()):
+            if len(places) * self._side(1) ** 2 >= self._side(side) ** 2:
+                blocks.append(_Block(*corner, side))
+            else:
+                blocks.extend(_Block(*place, 1) for place in places)
+        return blocks
+
+    def _prepared(self, blocks: Sequence[_Block]) -> Iterator[_Prepared]:
         """Yield blocks ready for the net, one read ahead."""
         ahead = [self._reader.submit(self._prepare, block) for block in blocks[:1]]
         for following in [*blocks[1:], None]:
@@ -118,32 +147,32 @@ class FieldStore:
                 ahead.append(self._reader.submit(self._prepare, following))
             yield prepared
 
-    def _prepare(self, block: Place) -> _Prepared:
-        side, halo = self._side, self.model.halo
-        row, col = (index * self._per_block * PAGE_PIXELS - halo for index in block)
-        patch = self.mosaic.read(row, col, side, side)
+    def _prepare(self, block: _Block) -> _Prepared:
+        side, halo = self._side(block.side), self.model.halo
+        row, col = block.p * PAGE_PIXELS - halo, block.q * PAGE_PIXELS - halo
+        colour, cover = self.mosaic.read_colour(row, col, side, side)
         wider = side + 2 * RELIEF_REACH
         height = self.mosaic.read_height(row - RELIEF_REACH, col - RELIEF_REACH, wider, wider)
         reliefs = (None, None) if height is None else relief(height)
-        inputs = stack_inputs(patch.colour, patch.cover == COVER_VALID, *reliefs)
-        core = patch.cover[halo : side - halo, halo : side - halo]
+        inputs = stack_inputs(colour, cover == COVER_VALID, *reliefs)
+        core = cover[halo : side - halo, halo : side - halo]
         cells = core.reshape(core.shape[0] // NET_STRIDE, NET_STRIDE, -1, NET_STRIDE).min(axis=(1, 3))
         return _Prepared(block, inputs[None], cells)
 
     def _run(self, prepared: _Prepared) -> Iterator[tuple[Place, Page]]:
         """Run the net on a block and yield its pages that hold data."""
-        if self._session is None:
-            self._session = self.model.session(self._side, self._side, self._threads)
-        (fields,) = self._session.run(["fields"], {"tiles": prepared.inputs})
+        block = prepared.block
+        if block.side not in self._sessions:
+            side = self._side(block.side)
+            self._sessions[block.side] = self.model.session(side, side, self._threads)
+        (fields,) = self._sessions[block.side].run(["fields"], {"tiles": prepared.inputs})
         margin = self.model.halo // NET_STRIDE
-        for i in range(self._per_block):
-            for j in range(self._per_block):
-                place = prepared.block[0] * self._per_block + i, prepared.block[1] * self._per_block + j
-                if self._holds_data(place):
-                    top, left = i * PAGE, j * PAGE
-                    cover = prepared.cover[top : top + PAGE, left : left + PAGE]
-                    part = fields[0, :, margin + top : margin + top + PAGE, margin + left : margin + left + PAGE]
-                    yield place, quantise(part, cover, self.model.calibration)
+        for p, q in block.pages:
+            if self._holds_data((p, q)):
+                top, left = (p - block.p) * PAGE, (q - block.q) * PAGE
+                cover = prepared.cover[top : top + PAGE, left : left + PAGE]
+                part = fields[0, :, margin + top : margin + top + PAGE, margin + left : margin + left + PAGE]
+                yield (p, q), quantise(part, cover, self.model.calibration)
 
 
 def _blank() -> Page:

@@ -50,9 +50,14 @@ _handles = _Handles()
 
 @contextmanager
 def dataset(stamp: Stamp) -> Iterator[DatasetReader]:
-    """Give this thread's handle of a file."""
+    """Give this thread's handle of a file; BadInput if GDAL cannot open it."""
     with rasterio.Env(GDAL_CACHEMAX=CACHE_BYTES):
-        yield _handles.get(stamp)
+        try:
+            source = _handles.get(stamp)
+        except RasterioIOError as error:
+            name = Path(stamp[0]).name
+            raise BadInput(f"{name} is no raster that can be read; copy it again or export it as GeoTIFF.") from error
+        yield source
 
 
 def stamp_of(path: Path) -> Stamp:
@@ -69,14 +74,11 @@ def stamp_of(path: Path) -> Stamp:
     stamp = (str(path), status.st_mtime_ns, status.st_size)
     if status.st_size == 0:
         raise BadInput(f"{path.name} is empty; copy or export it again.")
-    try:
-        with dataset(stamp) as source:
-            if source.count == 0:
-                raise BadInput(f"{path.name} holds no image of its own; name one of the rasters inside it.")
-            if source.driver in ("GTiff", "COG") and _reach(source) > status.st_size:
-                raise BadInput(f"{path.name} is cut short; copy or export it again.")
-    except RasterioIOError as error:
-        raise BadInput(f"{path.name} is no raster that can be read; export it as GeoTIFF.") from error
+    with dataset(stamp) as source:
+        if source.count == 0:
+            raise BadInput(f"{path.name} holds no image of its own; name one of the rasters inside it.")
+        if source.driver in ("GTiff", "COG") and _reach(source) > status.st_size:
+            raise BadInput(f"{path.name} is cut short; copy or export it again.")
     return stamp
 
 

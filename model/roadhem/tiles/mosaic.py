@@ -20,7 +20,7 @@ from roadhem.tiles.source import open_tile
 from roadhem.tiles.tile import Tile
 
 COARSEST_M = 0.40
-"""Ground pixels coarser than this are refused; COARSE_M draws a warning."""
+"""Ground pixels coarser than this, to the centimetre, are refused; coarser than COARSE_M draws a warning."""
 COARSE_M = 0.25
 
 HEIGHT_COARSE_M = 0.5
@@ -131,9 +131,16 @@ class Mosaic:
 
     def read(self, row: int, col: int, rows: int, cols: int) -> Patch:
         """Read working pixels [row, row + rows) x [col, col + cols), which may lie anywhere."""
+        colour, cover = self.read_colour(row, col, rows, cols)
+        return Patch(colour, cover, self.read_height(row, col, rows, cols))
+
+    def read_colour(
+        self, row: int, col: int, rows: int, cols: int
+    ) -> tuple[NDArray[np.float32], NDArray[np.uint8]]:
+        """Read colour (3, rows, cols) and cover (rows, cols) as in `Patch`."""
         colour, cover = self._colour.sample(self.grid, row, col, rows, cols, 3)
         np.clip(colour, 0, 1, out=colour)
-        return Patch(colour, cover, self.read_height(row, col, rows, cols))
+        return colour, cover
 
     def read_height(self, row: int, col: int, rows: int, cols: int) -> NDArray[np.float32] | None:
         """Read heights (rows, cols) in metres, NaN where there is none; None for a run without heights."""
@@ -176,13 +183,13 @@ def _check(tile: Tile, usable: Sequence[Tile], warnings: list[str]) -> None:
             f"reproject it or run it on its own."
         )
     tile.pixel_m = _ground_side(tile)
-    if tile.pixel_m > COARSEST_M + 1e-6:
+    if round(tile.pixel_m, 2) > COARSEST_M:
         raise BadInput(
             f"{tile.name} has pixels of {tile.pixel_m:.2f} m on the ground, coarser than {COARSEST_M:.2f} m; "
             f"use finer imagery."
         )
     tile.settle()
-    if tile.pixel_m > COARSE_M + 1e-6:
+    if round(tile.pixel_m, 2) > COARSE_M:
         warnings.append(
             f"{tile.name} has pixels of {tile.pixel_m:.2f} m on the ground; "
             f"placement is poor above {COARSE_M:.2f} m."

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from functools import lru_cache
 
 from pyproj import CRS, Transformer
 from pyproj.exceptions import CRSError
@@ -40,6 +41,11 @@ def metres_per_unit(crs: CRS) -> float:
     return float(crs.axis_info[0].unit_conversion_factor)
 
 
+@lru_cache(maxsize=16)
+def _to_degrees(crs: CRS) -> Transformer:
+    return Transformer.from_crs(crs, crs.geodetic_crs, always_xy=True)
+
+
 def point_scale(crs: CRS, x: float, y: float) -> float:
     """Length on the map over length on the ground at (x, y), the mean of both directions.
 
@@ -49,8 +55,7 @@ def point_scale(crs: CRS, x: float, y: float) -> float:
     if crs.geodetic_crs is None:
         return 1.0
     half = PROBE_M / metres_per_unit(crs) / 2
-    to_degrees = Transformer.from_crs(crs, crs.geodetic_crs, always_xy=True)
-    lon, lat = to_degrees.transform([x - half, x + half, x, x], [y, y, y - half, y + half])
+    lon, lat = _to_degrees(crs).transform([x - half, x + half, x, x], [y, y, y - half, y + half])
     geod = crs.get_geod()
     east = geod.inv(lon[0], lat[0], lon[1], lat[1])[2]
     north = geod.inv(lon[2], lat[2], lon[3], lat[3])[2]

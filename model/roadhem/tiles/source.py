@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
@@ -41,16 +42,34 @@ class RasterTile(Tile):
     palette: NDArray[np.uint8] | None = field(default=None, repr=False)
 
     def raw(self, row: int, col: int, rows: int, cols: int) -> Pixels:
-        """Read a window; a place that cannot be read is a fault and holds no data."""
-        try:
-            with dataset(self.stamp) as source:
+        """Read a window; blocks of the file that cannot be read are a fault and hold no data."""
+        with dataset(self.stamp) as source:
+            try:
                 return self._read(source, Window(col, row, cols, rows))
-        except (RasterioError, OSError):
-            fault = f"{self.name} cannot be read to its end; copy or export it again."
-            if fault not in self.faults:
-                self.faults.append(fault)
-            kind = np.uint8 if self.eight_bit else np.float32
-            return np.zeros((self.planes, rows, cols), kind), np.zeros((rows, cols), bool)
+            except (RasterioError, OSError):
+                return self._salvage(source, row, col, rows, cols)
+
+    def _salvage(self, source: DatasetReader, row: int, col: int, rows: int, cols: int) -> Pixels:
+        """Read a window block by block, so that which pixels are lost does not depend on the window."""
+        values = np.zeros((self.planes, rows, cols), np.uint8 if self.eight_bit else np.float32)
+        valid = np.zeros((rows, cols), bool)
+        high, wide = source.block_shapes[0]
+        for first, last in _cuts(row, rows, high):
+            for start, end in _cuts(col, cols, wide):
+                part = np.s_[first - row : last - row, start - col : end - col]
+                try:
+                    found, known = self._read(source, Window(start, first, end - start, last - first))
+                except (RasterioError, OSError):
+                    self._note()
+                else:
+                    values[(slice(None), *part)] = found
+                    valid[part] = True if known is None else known
+        return values, valid
+
+    def _note(self) -> None:
+        fault = f"{self.name} is damaged in places; copy or export it again."
+        if fault not in self.faults:
+            self.faults.append(fault)
 
     def _read(self, source: DatasetReader, window: Window) -> Pixels:
         bands = self.bands if self.alpha is None else (*self.bands, self.alpha)
@@ -68,6 +87,12 @@ class RasterTile(Tile):
             values = np.moveaxis(colours[..., :3], 2, 0)
             valid &= colours[..., 3] > 0
         return values, None if valid.all() else valid
+
+
+def _cuts(start: int, length: int, block: int) -> list[tuple[int, int]]:
+    """Parts [first, last) of [start, start + length) that lie in one block each."""
+    marks = [start, *range((start // block + 1) * block, start + length, block), start + length]
+    return list(pairwise(marks))
 
 
 def open_tile(path: Path, crs: CRS | None) -> RasterTile:
