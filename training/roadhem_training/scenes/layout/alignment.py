@@ -8,7 +8,7 @@ from collections.abc import Callable, Sequence
 import numpy as np
 import shapely
 from numpy.typing import NDArray
-from shapely.geometry import LineString, Polygon
+from shapely.geometry import LineString, MultiPolygon, Polygon
 
 Points = NDArray[np.float64]
 Offset = float | Callable[[Points], Points]
@@ -55,7 +55,8 @@ class Alignment:
         return LineString(self.xy)
 
     def _segment(self, s: Points) -> NDArray[np.intp]:
-        return np.clip(np.searchsorted(self.s, s, side="right") - 1, 0, len(self.direction) - 1)
+        k = np.searchsorted(self.s, s, side="right") - 1
+        return np.minimum(np.maximum(k, 0), len(self.direction) - 1)
 
     def at(self, s: float | Points, offset: float | Points = 0.0) -> Points:
         """Points (…, 2) at stations `s`, `offset` metres to the left."""
@@ -68,7 +69,7 @@ class Alignment:
 
     def heading(self, s: float) -> float:
         """Direction at station `s`, radians anticlockwise from east."""
-        d = self.direction[int(self._segment(np.asarray(s)))]
+        d = self.direction[self._segment(np.asarray(s))]
         return math.atan2(d[1], d[0])
 
     def station(self, x: float, y: float) -> float:
@@ -80,18 +81,20 @@ class Alignment:
 
         `offset` may be a function of the stations; `step` adds stations so that it is followed closely.
         """
-        stations = [np.array([s0]), self.s[(self.s > s0 + 1e-6) & (self.s < s1 - 1e-6)], np.array([s1])]
+        first, last = np.searchsorted(self.s, (s0 + 1e-6, s1 - 1e-6))
+        s = np.concatenate([[s0], self.s[first:last], [s1]])
         if step:
-            stations.append(np.arange(s0, s1, step))
-        s = np.unique(np.concatenate(stations))
+            s = np.union1d(s, np.arange(s0 + step, s1 - 1e-3, step))
         k = self._segment(s)
-        before = self.direction[np.where(np.isclose(s, self.s[k]) & (k > 0), k - 1, k)]
         after = self.direction[k]
+        before = self.direction[np.where((s - self.s[k] < 1e-9) & (k > 0), k - 1, k)]
         mean = before + after
-        normal = np.stack([-mean[:, 1], mean[:, 0]], axis=1)
-        normal /= np.maximum(1.0 + np.sum(before * after, axis=1), 0.4)[:, None]
-        d = offset(s) if callable(offset) else np.full(len(s), offset)
-        return self.xy[k] + (s - self.s[k])[:, None] * after + d[:, None] * normal
+        scale = 1.0 / np.maximum(1.0 + (before * after).sum(axis=1), 0.4)
+        d = (offset(s) if callable(offset) else offset) * scale
+        out = self.xy[k] + (s - self.s[k])[:, None] * after
+        out[:, 0] -= d * mean[:, 1]
+        out[:, 1] += d * mean[:, 0]
+        return out
 
     def strip(
         self, s0: float, s1: float, right: Offset, left: Offset, step: float | None = None
@@ -100,6 +103,11 @@ class Alignment:
         a = self.parallel(s0, s1, right, step)
         b = self.parallel(s0, s1, left, step)
         return valid(Polygon(np.concatenate([a, b[::-1]])))
+
+    def cells(self, s0: Points, s1: Points, right: Points, left: Points) -> MultiPolygon:
+        """Small four-cornered areas, one for each entry of the four arrays; right for short ones only."""
+        ring = np.stack([self.at(s0, right), self.at(s1, right), self.at(s1, left), self.at(s0, left)], axis=1)
+        return MultiPolygon(list(shapely.polygons(ring)))
 
     def part(self, s0: float, s1: float) -> Alignment:
         """The stretch from station s0 to s1."""

@@ -2,15 +2,17 @@
 
 from __future__ import annotations
 
+from collections import defaultdict
+
 import shapely
-from shapely.geometry import LineString
+from shapely.geometry import LineString, MultiPolygon
 from shapely.geometry.base import BaseGeometry
 
 from roadhem_training.scenes.layout.stretches import Stretch
 from roadhem_training.scenes.layout.surface import polygons
 from roadhem_training.scenes.world import Cover, OtherLine
 
-GUTTER_TONE = 0.2
+GUTTER_TONE, WALK_TONE = 0.15, 0.1
 LEAST_LINE = 1.0  # metres; shorter lines beside an edge are left out
 
 
@@ -36,35 +38,47 @@ def other_lines(stretch: Stretch) -> list[OtherLine]:
     if e.verge:
         out += [OtherLine(line, "verge") for line in beside(stretch, e.stone + e.verge)]
     if e.footway:
-        out += [OtherLine(line, "footway") for line in beside(stretch, e.stone + e.verge + e.footway)]
+        out += [OtherLine(line, "footway") for line in beside(stretch, e.depth)]
     return out
 
 
-def gutter(stretch: Stretch, surface: BaseGeometry) -> list[Cover]:
-    """The gutter strip inside a stretch, none where it is made of the road's own asphalt."""
-    e = stretch.edging
-    if not e.gutter or e.gutter_material == "asphalt":
-        return []
-    return [Cover(g, e.gutter_material, GUTTER_TONE) for g in polygons(band(stretch, e.gutter, surface))]
-
-
-def curb_stone(stretch: Stretch, face: BaseGeometry) -> list[Cover]:
-    """The band of curb stone just outside a stretch."""
-    e = stretch.edging
-    if not e.stone:
-        return []
-    relief = e.height
-    return [Cover(g, "concrete", e.stone_tone, relief=relief) for g in polygons(band(stretch, e.stone, face))]
-
-
-def walks(stretch: Stretch, face: BaseGeometry) -> list[Cover]:
-    """Footway, then the verge between it and the road."""
-    e = stretch.edging
+def _merged(areas: dict[tuple[str, float, float], list[BaseGeometry]]) -> list[Cover]:
     out = []
-    if e.footway:
-        area = band(stretch, e.stone + e.verge + e.footway, face)
-        out += [Cover(g, e.footway_material, 0.1, relief=e.height) for g in polygons(area)]
-    if e.verge:
-        area = band(stretch, e.stone + e.verge, face)
-        out += [Cover(g, e.verge_material, 0.0, relief=e.height) for g in polygons(area)]
+    for (material, tone, relief), pieces in areas.items():
+        found = polygons(shapely.union_all(pieces))
+        if found:
+            out.append(Cover(MultiPolygon(found), material, tone, relief=relief))
     return out
+
+
+def gutters(stretches: list[Stretch], surface: BaseGeometry) -> list[Cover]:
+    """The gutter strips, none where they are made of the road's own asphalt."""
+    areas = defaultdict(list)
+    for s in stretches:
+        e = s.edging
+        if e.gutter and e.gutter_material != "asphalt":
+            areas[e.gutter_material, GUTTER_TONE, 0.0].append(band(s, e.gutter, surface))
+    return _merged(areas)
+
+
+def curb_stones(stretches: list[Stretch], face: BaseGeometry) -> list[Cover]:
+    """The bands of curb stone just outside the edge of one piece of land."""
+    areas = defaultdict(list)
+    for s in stretches:
+        e = s.edging
+        if e.stone:
+            areas[e.stone_material, e.stone_tone, e.height].append(band(s, e.stone, face))
+    return _merged(areas)
+
+
+def walks(stretches: list[Stretch], face: BaseGeometry) -> list[Cover]:
+    """Footways, then the verges between them and the road, of one piece of land."""
+    ways, verges = defaultdict(list), defaultdict(list)
+    for s in stretches:
+        e = s.edging
+        relief = e.height
+        if e.footway:
+            ways[e.footway_material, WALK_TONE, relief].append(band(s, e.depth, face))
+        if e.verge:
+            verges[e.verge_material, 0.0, relief].append(band(s, e.stone + e.verge, face))
+    return _merged(ways) + _merged(verges)

@@ -1,4 +1,4 @@
-"""What fills the land between the roads: ground, houses and halls, walls, fences and hedges."""
+"""What stands on the land between the roads: houses and halls, walls, fences and hedges."""
 
 from __future__ import annotations
 
@@ -15,46 +15,44 @@ from roadhem_training.scenes.layout.stretches import OpenChain, Stretch
 from roadhem_training.scenes.layout.surface import polygons
 from roadhem_training.scenes.world import Body, OtherLine
 
-LAND = {
-    "old_town": {"pavers": 0.35, "soil": 0.15, "grass": 0.25, "concrete": 0.15, "gravel": 0.1},
-    "suburb": {"grass": 0.8, "soil": 0.1, "planting": 0.1},
-    "industry": {"concrete": 0.25, "asphalt": 0.25, "gravel": 0.2, "grass": 0.3},
-}
 ROOFS = {"flat": 0.35, "gable": 0.45, "hip": 0.2}
-BUILT = {"old_town": 0.9, "suburb": 0.85, "industry": 0.8}
-FENCED = {"old_town": 0.25, "suburb": 0.5, "industry": 0.4}
+FENCED = {"perimeter": 0.25, "detached": 0.5, "halls": 0.4, "park": 0.3, "field": 0.15, "wood": 0.1, "square": 0.1, "waste": 0.3}
+THICKNESS = {"wall": 0.25, "fence": 0.08, "hedge": 0.8}
+PERIMETER_DEPTH, PERIMETER_WIDTH, PERIMETER_HEIGHT = (8.0, 13.0), (6.0, 16.0), (6.0, 19.0)
+SETBACK = (2.5, 8.0)
+LOWEST_ROOF_LINE = 3.0  # metres; outlines of roofs are drawn as lines that mislead
 
 
-def houses(rng: np.random.Generator, style: str, plot: BaseGeometry, front: list[Stretch]) -> list[Body]:
+def buildings(rng: np.random.Generator, use: str, plot: BaseGeometry, front: list[Stretch]) -> list[Body]:
     """Buildings of one block: `plot` is the land inside the footways, `front` the stretches round it."""
-    if not chance(rng, BUILT[style]):
+    builders = {"perimeter": _perimeter, "detached": _detached, "halls": _halls}
+    if use not in builders:
         return []
-    build = {"old_town": _perimeter, "suburb": _detached, "industry": _halls}[style]
-    return [b for piece in polygons(plot) if piece.area > 60 for b in build(rng, piece, front)]
+    return [b for piece in polygons(plot) if piece.area > 60 for b in builders[use](rng, piece, front)]
+
+
+def roof_lines(bodies: list[Body]) -> list[OtherLine]:
+    """The outlines of buildings."""
+    return [OtherLine(LineString(b.footprint.exterior), "roof") for b in bodies if b.top >= LOWEST_ROOF_LINE]
 
 
 def _perimeter(rng: np.random.Generator, plot: Polygon, front: list[Stretch]) -> list[Body]:
     """Houses wall to wall along the street, a court behind."""
-    depth = rng.uniform(8, 13)
-    land = plot.buffer(-rng.uniform(0.05, 1.0), join_style="mitre")
+    depth = between(rng, PERIMETER_DEPTH)
     out: list[Body] = []
-    for piece in polygons(land):
+    for piece in polygons(plot.buffer(-rng.uniform(0.05, 1.0), join_style="mitre")):
         ring = piece.difference(piece.buffer(-depth, join_style="mitre"))
-        chain = OpenChain(LineString(piece.exterior))
-        taken: list[BaseGeometry] = []
+        chain = OpenChain(LineString(piece.simplify(0.05).exterior))
         at = 0.0
         while at < chain.length - 2:
-            wide = rng.uniform(6, 16)
-            strip = chain.piece(at, min(at + wide, chain.length)).buffer(depth + 0.01, cap_style="flat")
-            at += wide
-            if chance(rng, 0.08):
-                continue
-            area = strip.intersection(ring).difference(shapely.union_all(taken))
-            house = max(polygons(area), key=lambda g: g.area, default=Polygon())
-            taken.append(strip)
-            if house.area > 20:
-                heading = chain.frame(min(at, chain.length))[1]
-                out.append(_house(rng, house, rng.uniform(6, 19), math.atan2(heading[1], heading[0])))
+            end = min(at + between(rng, PERIMETER_WIDTH), chain.length)
+            strip = chain.piece(at, end).buffer(depth + 0.01, cap_style="flat", join_style="mitre")
+            house = max(polygons(strip.intersection(ring)), key=lambda g: g.area, default=Polygon())
+            ring = ring.difference(strip)
+            if house.area > 20 and not chance(rng, 0.08):
+                d = chain.frame(0.5 * (at + end))[1]
+                out.append(_house(rng, house, between(rng, PERIMETER_HEIGHT), math.atan2(d[1], d[0])))
+            at = end
     return out
 
 
@@ -63,13 +61,14 @@ def _house(rng: np.random.Generator, area: Polygon, top: float, heading: float) 
 
 
 def _detached(rng: np.random.Generator, plot: Polygon, front: list[Stretch]) -> list[Body]:
-    """Single houses with a garage now and then, facing the street."""
-    setback = rng.uniform(2.5, 8)
+    """Single houses facing the street, some with a wing."""
+    setback = between(rng, SETBACK)
     room = plot.buffer(-1.0)
+    shapely.prepare(room)
     out: list[Body] = []
     for stretch in front:
         chain = OpenChain(stretch.line)
-        back = stretch.edging.stone + stretch.edging.verge + stretch.edging.footway + setback
+        back = stretch.edging.depth + setback
         at = rng.uniform(3, 8)
         while at < chain.length:
             wide, deep = rng.uniform(8, 16), rng.uniform(8, 13)
@@ -77,6 +76,9 @@ def _detached(rng: np.random.Generator, plot: Polygon, front: list[Stretch]) -> 
             heading = math.atan2(d[1], d[0])
             out_by = back + 0.5 * deep + rng.normal(0, 0.5)
             area = oriented_box(x + d[1] * out_by, y - d[0] * out_by, wide, deep, heading)
+            if chance(rng, 0.35):
+                wing = oriented_box(x + d[1] * (out_by - 2), y - d[0] * (out_by - 2), wide * 0.5, deep + 2.5, heading)
+                area = shapely.union(area, wing)
             if room.contains(area) and not any(area.distance(b.footprint) < 2.5 for b in out):
                 out.append(_house(rng, area, rng.uniform(4, 9), heading))
             at += wide * 0.5 + rng.uniform(3, 8)
@@ -91,22 +93,23 @@ def _halls(rng: np.random.Generator, plot: Polygon, front: list[Stretch]) -> lis
     room = plot.buffer(-rng.uniform(2, 6))
     out: list[Body] = []
     x0, y0, x1, y1 = plot.bounds
-    for _ in range(12):
+    for k in range(14):
         x, y = rng.uniform((x0, y0), (x1, y1))
-        area = oriented_box(x, y, rng.uniform(15, 60), rng.uniform(10, 30), heading)
+        shrink = 1.0 - 0.05 * k
+        area = oriented_box(x, y, rng.uniform(15, 60) * shrink, rng.uniform(10, 30) * shrink, heading)
         if room.contains(area) and not any(area.distance(b.footprint) < 5 for b in out):
             out.append(Body(area, rng.uniform(4, 14), "hall", 0.0, rng.random(), "flat", heading))
     return out
 
 
-def enclosure(rng: np.random.Generator, style: str, plot: BaseGeometry) -> tuple[list[Body], list[OtherLine]]:
+def enclosure(rng: np.random.Generator, use: str, plot: BaseGeometry) -> tuple[list[Body], list[OtherLine]]:
     """A wall, fence or hedge along the inside of the footway, with gaps."""
-    bodies, lines = [], []
-    if not chance(rng, FENCED[style]):
+    bodies: list[Body] = []
+    lines: list[OtherLine] = []
+    if not chance(rng, FENCED[use]):
         return bodies, lines
     what = pick(rng, {"wall": 0.3, "fence": 0.35, "hedge": 0.35})
-    thick = {"wall": 0.25, "fence": 0.08, "hedge": 0.8}[what]
-    top = between(rng, (0.8, 2.0))
+    thick, top = THICKNESS[what], between(rng, (0.8, 2.0))
     for piece in polygons(plot.buffer(-0.5 * thick - 0.1, join_style="mitre")):
         chain, at = OpenChain(LineString(piece.exterior)), 0.0
         while at < chain.length - 3:
@@ -114,6 +117,6 @@ def enclosure(rng: np.random.Generator, style: str, plot: BaseGeometry) -> tuple
             line = chain.piece(at, at + run)
             area = line.buffer(0.5 * thick, cap_style="flat", join_style="mitre")
             bodies.append(Body(area, top, what, 0.0, rng.random()))
-            lines.append(OtherLine(line, what if what != "fence" else "wall"))
+            lines.append(OtherLine(line, "hedge" if what == "hedge" else "wall"))
             at += run + rng.uniform(3, 7)
     return bodies, lines

@@ -30,10 +30,14 @@ GUTTER: Span = (0.3, 0.6)
 CURB_STONE: Span = (0.08, 0.30)
 DRIVEWAY: Span = (3.0, 7.0)
 RAMP: Span = (1.2, 5.0)
-GUTTER_ODDS = {"concrete": 0.5, "asphalt": 0.25, "setts": 0.25}
-STONE_TONE_ODDS: Mapping[Span, float] = {(0.3, 1.0): 0.5, (-0.1, 0.1): 0.25, (0.1, 0.3): 0.15, (-0.8, -0.2): 0.1}
-FOOTWAY_ODDS = {"pavers": 0.4, "asphalt": 0.25, "concrete": 0.25, "setts": 0.05, "gravel": 0.05}
-VERGE_ODDS = {"grass": 0.65, "planting": 0.12, "soil": 0.13, "setts": 0.10}
+ISLAND_FILL = {"grass": 0.3, "mown": 0.1, "planting": 0.2, "pavers": 0.15, "setts": 0.05, "asphalt": 0.08, "slabs": 0.12}
+FOOTWAY_LIKE_ROAD = 0.12  # share of footways beside asphalt that are asphalt too
+THIN_STRIP = 0.12  # share of sides with a strip 0.3–0.9 m wide behind the curb that makes a line of its own
+GUTTER_ODDS = {"stone": 0.5, "asphalt": 0.25, "setts": 0.25}
+STONE_ODDS = {"curb": 0.4, "stone": 0.4, "asphalt": 0.2}
+STONE_TONE_ODDS: Mapping[Span, float] = {(0.2, 0.8): 0.45, (-0.15, 0.2): 0.4, (-0.7, -0.15): 0.15}
+FOOTWAY_ODDS = {"pavers": 0.28, "slabs": 0.25, "asphalt": 0.2, "concrete": 0.18, "setts": 0.04, "gravel": 0.05}
+VERGE_ODDS = {"grass": 0.4, "mown": 0.2, "dry_grass": 0.08, "planting": 0.1, "soil": 0.12, "setts": 0.10}
 
 
 @dataclass(frozen=True)
@@ -62,31 +66,45 @@ class StreetOdds:
     parking: float
     marked: float
     driveway_every: Span
+    flush: float
+    flush_alley: float
+    bays: float
+    lots: float
+    closes: float
 
 
 STREETS: Mapping[str, StreetOdds] = {
     "old_town": StreetOdds(
         block=(30, 52), skew=0.16, warp=0.35, crossing=0.45,
-        width={"main": (9, 16), "street": (5.5, 9.5), "alley": (3.2, 5.5)},
+        width={"main": (9, 16), "street": (5.5, 9.5), "alley": (3.2, 5.5), "close": (3.5, 6)},
         surface={"asphalt": 0.72, "setts": 0.22, "concrete": 0.06},
         gutter=0.4, stone=0.8, verge=0.15, footway=0.96, footway_width=(1.2, 4.0),
         median=0.25, parking=0.6, marked=0.6, driveway_every=(25, 60),
+        flush=0.03, flush_alley=0.25, bays=0.3, lots=0.25, closes=0.1,
     ),
     "suburb": StreetOdds(
         block=(40, 68), skew=0.10, warp=0.7, crossing=0.3,
-        width={"main": (9, 14), "street": (6, 11), "alley": (3.5, 6)},
+        width={"main": (9, 14), "street": (6, 11), "alley": (3.5, 6), "close": (4.8, 9)},
         surface={"asphalt": 0.86, "concrete": 0.10, "setts": 0.04},
         gutter=0.6, stone=0.65, verge=0.5, footway=0.75, footway_width=(1.2, 2.2),
         median=0.15, parking=0.4, marked=0.45, driveway_every=(12, 28),
+        flush=0.1, flush_alley=0.5, bays=0.2, lots=0.12, closes=0.4,
     ),
     "industry": StreetOdds(
         block=(55, 90), skew=0.06, warp=0.3, crossing=0.4,
-        width={"main": (10, 18), "street": (7, 12), "alley": (4.5, 8)},
+        width={"main": (10, 18), "street": (7, 12), "alley": (4.5, 8), "close": (6, 9)},
         surface={"asphalt": 0.75, "concrete": 0.25},
         gutter=0.4, stone=0.6, verge=0.5, footway=0.55, footway_width=(1.4, 2.5),
         median=0.25, parking=0.35, marked=0.65, driveway_every=(25, 60),
+        flush=0.1, flush_alley=0.5, bays=0.2, lots=0.6, closes=0.2,
     ),
 }  # fmt: skip
+
+LAND = {
+    "old_town": {"perimeter": 0.72, "detached": 0.05, "park": 0.09, "square": 0.09, "waste": 0.05},
+    "suburb": {"detached": 0.78, "perimeter": 0.04, "park": 0.1, "wood": 0.04, "waste": 0.04},
+    "industry": {"halls": 0.66, "detached": 0.04, "park": 0.08, "waste": 0.16, "field": 0.06},
+}
 
 
 def chance(rng: np.random.Generator, share: float) -> bool:

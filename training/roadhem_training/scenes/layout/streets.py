@@ -13,8 +13,14 @@ from shapely.ops import split
 
 from roadhem_training.scenes.layout import odds
 from roadhem_training.scenes.layout.alignment import Alignment
+from roadhem_training.scenes.layout.annexes import bays, dead_ends
+from roadhem_training.scenes.layout.crosswalks import crosswalks
+from roadhem_training.scenes.layout.junctions import junctions
+from roadhem_training.scenes.layout.lots import place_lots
+from roadhem_training.scenes.layout.medians import medians
 from roadhem_training.scenes.layout.odds import StreetOdds, between, chance, pick, pick_between
-from roadhem_training.scenes.layout.plan import Edging, Road
+from roadhem_training.scenes.layout.plan import Edging, Plan, Road
+from roadhem_training.scenes.layout.surface import PLAN_REACH, rough_surface
 
 Rng = np.random.Generator
 Axis = tuple[LineString, str]
@@ -42,6 +48,7 @@ def _divide(rng: Rng, land: Polygon, depth: int, rules: StreetOdds, axes: list[A
     if lu < lv:
         u, v, lu, lv = v, u, lv, lu
     if lu < between(rng, rules.block) * 1.75:
+        _close(rng, land, rules, axes)
         return
     middle = np.array(land.centroid.coords[0]) + (u / lu) * lu * rng.uniform(-0.14, 0.14)
     rank = "main" if lu > 5 * rules.block[1] or depth < 1 else pick(rng, {"street": 0.8, "alley": 0.2})
@@ -55,6 +62,19 @@ def _divide(rng: Rng, land: Polygon, depth: int, rules: StreetOdds, axes: list[A
         rank = "street"
     for piece in pieces:
         _divide(rng, piece, depth + 1, rules, axes)
+
+
+def _close(rng: Rng, land: Polygon, rules: StreetOdds, axes: list[Axis]) -> None:
+    """At times a dead end into an undivided block, from the middle of its longest side."""
+    if not chance(rng, rules.closes):
+        return
+    xy = shapely.get_coordinates(land.exterior)
+    k = int(np.argmax(np.hypot(*np.diff(xy, axis=0).T)))
+    start = xy[k] + rng.uniform(0.35, 0.65) * (xy[k + 1] - xy[k])
+    goal = shapely.get_coordinates(land.centroid)[0] + rng.normal(0, 2.0, 2)
+    end = start + rng.uniform(0.9, 1.25) * (goal - start)
+    if np.hypot(*(end - start)) > 14:
+        axes.append((LineString([start, end]), "close"))
 
 
 def _cut(land: Polygon, at: NDArray[np.float64], angle: float) -> LineString:
@@ -98,27 +118,28 @@ def _focus(rng: Rng, axes: list[Axis], extent: float, size: float) -> tuple[floa
 
 
 def dress(rng: Rng, axes: list[Axis], rules: StreetOdds) -> list[Road]:
-    """Give every axis a carriageway, lanes and edgings; a place keeps to one family of kerbs and footways."""
-    family = _family(rng, rules)
-    roads = []
-    for line, rank in axes:
-        width = round(between(rng, rules.width[rank]), 2)
-        oneway = width < 5.0 or chance(rng, 0.12)
-        lanes = max(1 if oneway else 2, int(width // 3.1) if rank == "main" else (1 if width < 4.8 else 2))
-        roads.append(
-            Road(
-                axis=Alignment(shapely.get_coordinates(line)), width=width, lanes=lanes, rank=rank,
-                right=edging(rng, rules, family), left=edging(rng, rules, family),
-                material=pick(rng, rules.surface) if chance(rng, 0.35) else family.surface,
-                tone=float(np.clip(rng.normal(0, 0.45), -1, 1)), oneway=oneway,
-                parking=(chance(rng, rules.parking), chance(rng, rules.parking)) if width > 6 else (False, False),
-                marked=chance(rng, rules.marked) and width > 4.8, direction=rng.uniform(0, math.pi),
-            )
-        )  # fmt: skip
-    return roads
+    """Give every axis a carriageway, lanes and edgings; a place keeps to one family of curbs and footways."""
+    family = Family(rng, rules)
+    return [_road(rng, line, rank, rules, family) for line, rank in axes]
 
 
-class _Family:
+def _road(rng: Rng, line: LineString, rank: str, rules: StreetOdds, family: Family) -> Road:
+    width = round(between(rng, rules.width[rank]), 2)
+    oneway = width < 5.0 or chance(rng, 0.12)
+    lanes = max(1 if oneway else 2, int(width // 3.1) if rank == "main" else (1 if width < 4.8 else 2))
+    material = pick(rng, rules.surface) if chance(rng, 0.35) else family.surface
+    parking = [width > 6 and chance(rng, rules.parking) for _ in range(2)]
+    flush = rank == "alley" and chance(rng, rules.flush_alley) or chance(rng, rules.flush)
+    right, left = (_side(rng, rules, family, flush, material) for _ in range(2))
+    return Road(
+        axis=Alignment(shapely.get_coordinates(line)), width=width, lanes=lanes, rank=rank, right=right, left=left,
+        material=material, tone=float(np.clip(rng.normal(0, 0.45), -1, 1)), oneway=oneway,
+        parking=(parking[0], parking[1]), marked=width > 4.8 and chance(rng, rules.marked),
+        direction=Alignment(shapely.get_coordinates(line)).heading(0.0) + pick(rng, {0.0: 0.7, 0.785: 0.3}),
+    )  # fmt: skip
+
+
+class Family:
     """What the streets of one place have in common."""
 
     def __init__(self, rng: Rng, rules: StreetOdds):
@@ -126,23 +147,47 @@ class _Family:
         self.gutter = between(rng, odds.GUTTER) if chance(rng, rules.gutter) else 0.0
         self.gutter_material = pick(rng, odds.GUTTER_ODDS)
         self.stone = between(rng, odds.CURB_STONE) if chance(rng, rules.stone) else 0.0
+        self.stone_material = pick(rng, odds.STONE_ODDS)
         self.stone_tone = pick_between(rng, odds.STONE_TONE_ODDS)
         self.footway_material = pick(rng, odds.FOOTWAY_ODDS)
         self.verge_material = pick(rng, odds.VERGE_ODDS)
-        self.height = between(rng, odds.CURB_HEIGHT)
+        self.height = round(between(rng, odds.CURB_HEIGHT), 3)
 
 
-def _family(rng: Rng, rules: StreetOdds) -> _Family:
-    return _Family(rng, rules)
-
-
-def edging(rng: Rng, rules: StreetOdds, family: _Family) -> Edging:
+def _side(rng: Rng, rules: StreetOdds, family: Family, flush: bool, material: str) -> Edging:
     """One side of a street, mostly as its family has it."""
-    own = _Family(rng, rules) if chance(rng, 0.25) else family
+    if flush:
+        return flush_edging(rng)
+    own = Family(rng, rules) if chance(rng, 0.25) else family
     footway = between(rng, rules.footway_width) if chance(rng, rules.footway) else 0.0
+    same = material == "asphalt" and chance(rng, odds.FOOTWAY_LIKE_ROAD)
+    thin_strip = rng.uniform(0.3, 0.9) if chance(rng, odds.THIN_STRIP) else 0.0
     return Edging(
-        kind="raised", height=round(own.height, 3), gutter=own.gutter, gutter_material=own.gutter_material,
-        stone=own.stone, stone_tone=own.stone_tone,
-        verge=rng.uniform(0.5, 3.0) if chance(rng, rules.verge) else 0.0, verge_material=own.verge_material,
-        footway=footway, footway_material=own.footway_material,
+        height=own.height, gutter=own.gutter, gutter_material=own.gutter_material, stone=own.stone,
+        stone_material=own.stone_material, stone_tone=own.stone_tone,
+        verge=rng.uniform(0.5, 3.0) if chance(rng, rules.verge) else thin_strip, verge_material=own.verge_material,
+        footway=footway, footway_material="asphalt" if same else own.footway_material,
     )  # fmt: skip
+
+
+def flush_edging(rng: Rng) -> Edging:
+    """The end of the pavement with a loose shoulder or grass right beside it, at times a row of stones."""
+    shoulder = pick(rng, {"grass": 0.35, "dry_grass": 0.15, "gravel": 0.25, "soil": 0.25})
+    wide = rng.uniform(0.25, 2.0) if chance(rng, 0.8) else 0.0
+    stone = rng.uniform(0.08, 0.25) if chance(rng, 0.15) else 0.0
+    return Edging("flush", 0.0, stone=stone, stone_material=pick(rng, odds.STONE_ODDS), verge=wide, verge_material=shoulder)
+
+
+def plan_town(rng: Rng, size: float, style: str) -> Plan:
+    """Streets, junctions, islands, bays and lots of a town."""
+    rules = odds.STREETS[style]
+    window = box(-PLAN_REACH, -PLAN_REACH, size + PLAN_REACH, size + PLAN_REACH)
+    plan = Plan(size, style, dress(rng, street_axes(rng, size, PLAN_REACH, rules), rules))
+    plan.land, plan.driveway_every = odds.LAND[style], rules.driveway_every
+    plan.junctions, plan.islands = junctions(rng, plan.roads, window)
+    crosswalks(rng, plan)
+    bays(rng, plan, rules.bays)
+    dead_ends(rng, plan, window)
+    plan.islands += medians(rng, plan, rules.median)
+    place_lots(rng, plan, rough_surface(plan), window, rules.lots)
+    return plan

@@ -46,7 +46,11 @@ class _Owner:
 def boundary_stretches(plan: Plan, surface: MultiPolygon, reach: float) -> list[Stretch]:
     """All stretches of the boundary of `surface`, without the cut at `reach` metres beyond the frame."""
     owners = _owners(plan)
-    tree = shapely.STRtree([o.line for o in owners])
+    segments = [_segments(o.line) for o in owners]
+    if not segments:
+        return []
+    owner_of = np.repeat(np.arange(len(owners)), [len(g) for g in segments])
+    tree = shapely.STRtree(np.concatenate(segments))
     low, high = -reach + 1e-4, plan.size + reach - 1e-4
     out = []
     rings = [r for p in surface.geoms for r in (p.exterior, *p.interiors)]
@@ -55,7 +59,7 @@ def boundary_stretches(plan: Plan, surface: MultiPolygon, reach: float) -> list[
         s = np.union1d(np.arange(0.0, at.length, SAMPLE), at.s)
         s = s[np.concatenate([[True], np.diff(s) > 1e-7])]
         middle = at.points(0.5 * (s[1:] + s[:-1]))
-        nearest = tree.query_nearest(shapely.points(middle), all_matches=False)[1]
+        nearest = owner_of[tree.query_nearest(shapely.points(middle), all_matches=False)[1]]
         inside = np.all((middle > low) & (middle < high), axis=1)
         label = _steady(np.where(inside, nearest, -1), np.diff(s))
         out += _runs(at, s, label, owners, number)
@@ -82,6 +86,15 @@ def _owners(plan: Plan) -> list[_Owner]:
     owners += [_Owner(p.area.boundary, p.edging, p.role) for p in plan.parts]
     owners += [_Owner(i.area.boundary, i.edging, i.role) for i in plan.islands]
     return owners
+
+
+def _segments(line: BaseGeometry) -> NDArray[np.object_]:
+    """A line or ring in two-point pieces, which a search tree tells apart better."""
+    pieces = []
+    for part in shapely.get_parts(line):
+        xy = shapely.get_coordinates(part)
+        pieces.append(shapely.linestrings(np.stack([xy[:-1], xy[1:]], axis=1)))
+    return np.concatenate(pieces)
 
 
 def _runs(

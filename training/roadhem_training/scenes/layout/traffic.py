@@ -9,7 +9,6 @@ import shapely
 from shapely.geometry import MultiPolygon
 
 from roadhem_training.scenes.layout.alignment import Alignment
-from roadhem_training.scenes.layout.medians import clear_spans
 from roadhem_training.scenes.layout.odds import between, chance
 from roadhem_training.scenes.layout.plan import Plan
 from roadhem_training.scenes.layout.shapes import oriented_box
@@ -19,6 +18,7 @@ from roadhem_training.scenes.world import Body
 CAR_LENGTH, CAR_WIDTH, CAR_HEIGHT = (3.6, 4.9), (1.65, 1.95), (1.35, 1.9)
 TRUCK_LENGTH, TRUCK_WIDTH, TRUCK_HEIGHT = (7.0, 16.5), (2.3, 2.55), (2.8, 4.0)
 FROM_CURB = (0.1, 0.4)  # metres from the wheels to the foot of the curb
+USUAL_LENGTH, USUAL_WIDTH = 4.5, 1.8
 BUMPER_GAP = (0.6, 2.0)
 CLEAR_OF_JUNCTION = 5.0
 GROUND_CLEARANCE = 0.15
@@ -41,24 +41,25 @@ def vehicle(rng: np.random.Generator, x: float, y: float, heading: float, truck:
 def parked(rng: np.random.Generator, plan: Plan, stretches: list[Stretch]) -> list[Body]:
     """Rows along the sides of roads where parking is allowed, not before driveways or junctions."""
     out = []
-    nodes = shapely.multipoints([(n.x, n.y) for n in plan.junctions]) if plan.junctions else None
+    nodes = shapely.MultiPoint([(n.x, n.y) for n in plan.junctions])
     for stretch in stretches:
-        if stretch.owner != "road" or stretch.edging.kind == "lowered" or stretch.line.length < 6:
+        road = plan.roads[stretch.road] if stretch.road >= 0 else None
+        bay = stretch.owner == "bay" or (stretch.edging.kind == "flush" and road is not None and road.rank != "country")
+        allowed = road is not None and road.parking[0 if stretch.side < 0 else 1]
+        if not (bay or allowed) or stretch.edging.kind == "lowered" or stretch.line.length < 6:
             continue
-        road = plan.roads[stretch.road]
-        if not road.parking[0 if stretch.side < 0 else 1]:
-            continue
-        chain, fill = OpenChain(stretch.line), rng.uniform(0.3, 0.95)
+        chain, full = OpenChain(stretch.line), rng.uniform(0.3, 0.95)
+        side = -1.0 if stretch.edging.kind == "flush" and bay else 1.0
         at = rng.uniform(0.5, 3.0)
         while at + CAR_LENGTH[1] < chain.length:
-            length = 4.5
-            (x, y), d = chain.frame(at + 0.5 * length)
-            inward = between(rng, FROM_CURB) + 0.9
+            (x, y), d = chain.frame(at + 0.5 * USUAL_LENGTH)
+            inward = side * (between(rng, FROM_CURB) + 0.5 * USUAL_WIDTH)
             x, y = x - d[1] * inward, y + d[0] * inward
-            free = nodes is None or shapely.distance(nodes, shapely.points(x, y)) > road.half + CLEAR_OF_JUNCTION + 3
-            if free and chance(rng, fill):
+            half = road.half if road else 0.0
+            far = nodes.is_empty or nodes.distance(shapely.Point(x, y)) > half + CLEAR_OF_JUNCTION + 3
+            if (far or bay) and chance(rng, full):
                 out.append(vehicle(rng, x, y, math.atan2(d[1], d[0]) + rng.normal(0, 0.015)))
-            at += length + between(rng, BUMPER_GAP)
+            at += USUAL_LENGTH + between(rng, BUMPER_GAP)
     return out
 
 
@@ -66,7 +67,7 @@ def moving(rng: np.random.Generator, plan: Plan, surface: MultiPolygon) -> list[
     """Vehicles under way, each in its lane and on the surface."""
     out = []
     for k, road in enumerate(plan.roads):
-        for a, b in clear_spans(k, road, plan.junctions):
+        for a, b in plan.clear_spans(k):
             at = a + rng.uniform(0, MOVING_EVERY[1])
             while at < b - 3:
                 out.append(_in_lane(rng, road.axis, at, *_lane(rng, road.width, road.lanes, road.oneway)))
