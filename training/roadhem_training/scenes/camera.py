@@ -14,6 +14,9 @@ GAMMA_STEPS, BRIGHTEST = 4096, 1.5
 BRIGHT_PERCENT = 93
 """Percentile of the light that exposure is set by."""
 
+APART_PX = 23
+"""The bands' own noise is one draw taken so many rows apart."""
+
 HAZE = (0.42, 0.47, 0.54)
 """Light of the air between camera and ground."""
 
@@ -97,9 +100,11 @@ def sharpen(image: NDArray[np.float32], rng: np.random.Generator) -> NDArray[np.
 def noise_for(image: NDArray[np.float32], rng: np.random.Generator) -> NDArray[np.float32]:
     """Sensor noise: grows with the signal, mostly the same in all bands, sometimes smeared by resampling."""
     level = float(np.exp(rng.uniform(np.log(0.4), np.log(5.0))))
-    grey = rng.standard_normal(image.shape[:2], np.float32)
-    colour = rng.standard_normal(image.shape, np.float32) * np.float32(rng.uniform(0.1, 0.5))
-    noise = grey[..., None] + colour
+    rows, cols = image.shape[:2]
+    drawn = rng.standard_normal((rows + 3 * APART_PX, cols), np.float32)
+    colour = np.float32(rng.uniform(0.1, 0.5))
+    bands = [drawn[:rows] + colour * drawn[k * APART_PX : k * APART_PX + rows] for k in (1, 2, 3)]
+    noise = cv2.merge(bands)
     if rng.random() < 0.5:
         noise = cv2.GaussianBlur(noise, (0, 0), 0.7) * np.float32(2.0)
     return noise * np.float32(level)

@@ -3,14 +3,13 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
 import numba
 import numpy as np
 import shapely
 from numpy.typing import ArrayLike, NDArray
 from shapely.geometry.base import BaseGeometry
-
-from roadhem_training.scenes.world import MARGIN
 
 FAINT = 1e-4
 """Coverage below this is rounding error."""
@@ -69,7 +68,7 @@ def cover_area(area: BaseGeometry, frame: Frame, grow: float = 0.0) -> Patch | N
 
     Parameters
     ----------
-    area : polygon, multipolygon, or a collection of them, local metres; overlaps count once.
+    area : polygon, multipolygon or collection (its polygons count), local metres.
     frame : where to.
     grow : metres by which the window exceeds the area.
 
@@ -93,15 +92,19 @@ def polygon_rings(area: BaseGeometry) -> tuple[NDArray[np.float64], NDArray[np.i
     -------
     xy (n, 2), starts (m + 1,) offsets of the rings, signs (m,) +1 for outer rings and -1 for holes.
     """
-    polygons = [p for p in shapely.get_parts(area) if p.geom_type in ("Polygon", "MultiPolygon")]
-    polygons = list(shapely.get_parts(polygons)) if polygons else []
-    outer = [p.exterior for p in polygons]
-    holes = [ring for p in polygons for ring in p.interiors]
-    rings = outer + holes
-    counts = [len(r.coords) for r in rings]
-    starts = np.concatenate([[0], np.cumsum(counts)]).astype(np.int64)
-    signs = np.array([1.0] * len(outer) + [-1.0] * len(holes))
-    return shapely.get_coordinates(rings), starts, signs
+    rings, polygon = shapely.get_rings(np.atleast_1d(_polygons(area)), return_index=True)
+    xy, ring = shapely.get_coordinates(rings, return_index=True)
+    starts = np.searchsorted(ring, np.arange(len(rings) + 1))
+    signs = np.full(len(rings), -1.0)
+    signs[np.flatnonzero(np.diff(polygon, prepend=-1))] = 1.0
+    return xy, starts, signs
+
+
+def _polygons(area: BaseGeometry) -> Any:
+    if area.geom_type == "Polygon":
+        return area
+    parts = shapely.get_parts(area)
+    return parts[shapely.get_type_id(parts) == shapely.GeometryType.POLYGON]
 
 
 def cover_rings(
@@ -119,7 +122,7 @@ def cover_rings(
 
 def inside(area: BaseGeometry, frame: Frame) -> NDArray[np.bool_]:
     """Tell which pixel centres lie inside an area: (rows, cols) bool."""
-    xy, starts, signs = polygon_rings(area)
+    xy, starts, _ = polygon_rings(area)
     return _scan_centres(frame.to_pixels(xy), starts, frame.rows, frame.cols)
 
 
@@ -201,8 +204,3 @@ def _scan_centres(xy, starts, rows, cols):  # type: ignore[no-untyped-def]
             state ^= flips[r, c]
             flips[r, c] = state
     return flips
-
-
-def whole_frame(size: float) -> BaseGeometry:
-    """Return the square of the frame with its margin."""
-    return shapely.box(-MARGIN, -MARGIN, size + MARGIN, size + MARGIN)

@@ -15,33 +15,47 @@ from roadhem_training.scenes.world import Cover, World
 RAGGED = 0.5
 """How much of a soft edge's width its outline wanders."""
 
+SHARP_PX = 0.5
+"""An edge that fades over less than this is drawn sharp."""
 
-def lay_ground(world: World, frame: Frame, noise: Noise, rng: np.random.Generator) -> NDArray[np.float32]:
-    """Paint the covers and curb stones of a world: (rows, cols, 3) float32 relative reflectance."""
+OWN_COLOUR = 0.25
+"""Share of covers that get a colour of their own rather than the place's usual one of their material."""
+
+
+def lay_ground(
+    world: World, frame: Frame, noise: Noise, rng: np.random.Generator
+) -> tuple[NDArray[np.float32], NDArray[np.float32]]:
+    """Paint the covers and curb stones of a world.
+
+    Returns
+    -------
+    image (rows, cols, 3) float32 relative reflectance, relief (rows, cols) float32 metres added by the covers.
+    """
     image = np.full((frame.rows, frame.cols, 3), 0.15, np.float32)
+    relief = np.zeros((frame.rows, frame.cols), np.float32)
     means: dict[str, NDArray[np.float32]] = {}
     for cover in world.ground + world.curb_stones:
+        patch = cover_area(cover.area, frame, 2 * cover.edge_softness)
+        if patch is None:
+            continue
+        _raise(relief[patch.window], patch.cover, np.float32(cover.relief))
         material = material_of(cover.material)
-        if cover.material not in means or rng.random() < 0.25:
+        if cover.material not in means or rng.random() < OWN_COLOUR:
             means[cover.material] = pick_colour(material, rng, 0.0)
         colour = means[cover.material] * np.float32((1 + 0.28 * cover.tone) ** 2.2)
-        patch = soft_patch(cover, frame, noise)
-        if patch is not None:
-            rows = None if cover.material in JOINTLESS else material.rows
-            lay(image, patch, material, colour, rows, cover.direction, frame, noise, rng)
-    return image
+        rows = None if cover.material in JOINTLESS else material.rows
+        lay(image, _soften(patch, cover.edge_softness, noise), material, colour, rows, cover.direction, frame, noise, rng)
+    return image, relief
 
 
-def soft_patch(cover: Cover, frame: Frame, noise: Noise) -> Patch | None:
-    """Coverage of a cover; a soft edge fades and wanders about the true one."""
-    softness = cover.edge_softness
-    patch = cover_area(cover.area, frame, 2 * softness)
-    if patch is None or softness < 0.5 * frame.pixel:
+def _soften(patch: Patch, softness: float, noise: Noise) -> Patch:
+    """Let a soft edge fade over `softness` metres and wander about the true one."""
+    pixels = softness / noise.frame.pixel
+    if pixels < SHARP_PX:
         return patch
-    faded = cv2.GaussianBlur(patch.cover, (0, 0), softness / frame.pixel / 2)
-    wander = RAGGED * 0.3 * (noise.at(PEBBLE_M, 3)[patch.window] + noise.at(SPOT_M, 3)[patch.window])
-    wander = wander * (4 * faded * (1 - faded))
-    sharper = np.clip(0.5 + 1.6 * (faded - 0.5 + wander), 0, 1)
+    faded = cv2.GaussianBlur(patch.cover, (0, 0), pixels / 2)
+    wander = 0.3 * RAGGED * (noise.at(PEBBLE_M, 3)[patch.window] + noise.at(SPOT_M, 3)[patch.window])
+    sharper = np.clip(0.5 + 1.6 * (faded - 0.5 + 4 * faded * (1 - faded) * wander), 0, 1)
     return Patch(patch.window, sharper.astype(np.float32))
 
 
@@ -85,6 +99,13 @@ def row_numbers(rows: Rows | None, direction: float, rng: np.random.Generator) -
     turn = (np.cos(direction), np.sin(direction))
     size = (rows.length * scale, rows.width * scale)
     return np.array([*size, rows.joint, rows.joint_tone, rows.bond, 2 * rows.vary, *turn], np.float32)
+
+
+@numba.njit(cache=True)
+def _raise(relief, cover, height):  # type: ignore[no-untyped-def]
+    for r in range(cover.shape[0]):
+        for c in range(cover.shape[1]):
+            relief[r, c] += cover[r, c] * (height - relief[r, c])
 
 
 @numba.njit(cache=True)

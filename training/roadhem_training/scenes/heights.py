@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import cv2
+import numba
 import numpy as np
 from numpy.typing import NDArray
 
@@ -16,24 +17,20 @@ STEP_REACH_M = 1.0
 """From the height at the curb the ground goes over to the relief of its cover within this distance."""
 
 
-def ground_height(world: World, distance: SignedDistance, frame: Frame, noise: Noise) -> NDArray[np.float32]:
-    """Height of the bare ground at pixel centres: (rows, cols) float32 metres."""
-    x = (np.arange(frame.cols, dtype=np.float32) + 0.5) * frame.pixel
-    y = frame.top - (np.arange(frame.rows, dtype=np.float32)[:, None] + 0.5) * frame.pixel
-    height = (world.slope[0] * x + world.slope[1] * y).astype(np.float32)
-    height += 0.15 * noise.at(FIELD_M) + 0.02 * noise.at(DRIFT_M)
-    relief = np.zeros_like(height)
-    for cover in world.ground:
-        patch = cover_area(cover.area, frame)
-        if patch is not None:
-            relief[patch.window] += patch.cover * (np.float32(cover.relief) - relief[patch.window])
-    sdf, line = distance.sdf, distance.nearest.line_index
-    steps = np.array([edge.height for edge in world.edges] + [0.0], np.float32)[line]
-    far = np.where(line >= 0, np.clip(sdf / STEP_REACH_M, 0, 1), 1).astype(np.float32)
-    outside = np.clip(0.5 + sdf / frame.pixel, 0, 1)
-    rise = np.where(sdf > -0.5 * frame.pixel, steps + far * (relief - steps), 0) * outside
-    crown = world.crossfall * np.clip(-sdf, 0, 2.5)
-    return (height + rise + crown).astype(np.float32)
+def ground_height(
+    world: World, relief: NDArray[np.float32], distance: SignedDistance, frame: Frame, noise: Noise
+) -> NDArray[np.float32]:
+    """Height of the bare ground at pixel centres: (rows, cols) float32 metres.
+
+    The land lies as high as its curb right behind it, and as high as its cover says (`relief`) from STEP_REACH_M on.
+    """
+    x = (np.arange(frame.cols, dtype=np.float32) + np.float32(0.5)) * np.float32(frame.pixel)
+    height = np.float32(0.15) * noise.at(FIELD_M) + np.float32(0.02) * noise.at(DRIFT_M)
+    height += np.float32(world.slope[0]) * x + np.float32(world.slope[1]) * x[::-1, None]
+    steps = np.array([edge.height for edge in world.edges] + [0.0], np.float32)
+    numbers = np.array([world.crossfall, STEP_REACH_M, frame.pixel], np.float32)
+    _step_up(height, relief, distance.sdf, distance.nearest.line_index, steps, numbers)
+    return height
 
 
 def sense_height(
@@ -78,3 +75,20 @@ def _stand_up(height: NDArray[np.float32], world: World, coarse: Frame, flight: 
 def _blots(shape: tuple[int, int], rng: np.random.Generator) -> NDArray[np.bool_]:
     knots = rng.standard_normal((9, 9)).astype(np.float32)
     return cv2.resize(knots, (shape[1], shape[0]), interpolation=cv2.INTER_CUBIC) > rng.uniform(1.3, 2.2)
+
+
+@numba.njit(cache=True)
+def _step_up(height, relief, sdf, line, steps, numbers):  # type: ignore[no-untyped-def]
+    crossfall, reach, pixel = numbers
+    for r in range(height.shape[0]):
+        for c in range(height.shape[1]):
+            d = sdf[r, c]
+            outside = min(max(np.float32(0.5) + d / pixel, np.float32(0)), np.float32(1))
+            if outside > 0:
+                rise = relief[r, c]
+                if line[r, c] >= 0 and d < reach:
+                    step = steps[line[r, c]]
+                    rise = step + max(d, np.float32(0)) / reach * (rise - step)
+                height[r, c] += outside * rise
+            if d < 0:
+                height[r, c] += crossfall * min(-d, np.float32(2.5))

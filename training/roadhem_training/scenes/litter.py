@@ -68,7 +68,7 @@ def _snow_remains(
 ) -> None:
     """Patches of snow left beside the road."""
     colour = pick_colour(MATERIALS["snow"], rng, 0.0)
-    field = noise.at(PATCH_M, 7) + 0.5 * noise.at(SPOT_M, 7)
+    field = noise.at(PATCH_M, 7) + 0.6 * noise.at(SPOT_M, 7) + 0.3 * noise.at(PEBBLE_M, 7)
     alpha = np.clip((field - rng.uniform(0.3, 1.8)) * 4, 0, 1) * (distance.sdf > 0.1)
     image += alpha[..., None].astype(np.float32) * (colour - image)
 

@@ -83,7 +83,7 @@ def view(world: World, flight: Flight, seed: int, pixel: float = PIXEL_M) -> Vie
     frame = Frame.of_size(world.size, pixel)
     noise = Noise(seed, frame)
     distance = signed_distance(world, pixel)
-    image = _surface(world, distance, frame, flight, noise, np.random.default_rng([seed, 3]))
+    image, relief = _surface(world, distance, frame, flight, noise, np.random.default_rng([seed, 3]))
     crowns = [in_season(crown, flight) for crown in world.crowns]
     cars = [body for body in world.bodies if body.what in VEHICLES]
     dark = cast_bodies([body for body in world.bodies if body.what not in VEHICLES], frame, flight)
@@ -98,7 +98,7 @@ def view(world: World, flight: Flight, seed: int, pixel: float = PIXEL_M) -> Vie
     rng = np.random.default_rng([seed, 5])
     draw_bodies(image, hidden, world.bodies, above, frame, flight, noise, rng)
     draw_crowns(image, hidden, crowns, frame, flight, noise, rng)
-    return View(image, ground_height(world, distance, frame, noise), shadow, hidden)
+    return View(image, ground_height(world, relief, distance, frame, noise), shadow, hidden)
 
 
 def _surface(
@@ -108,11 +108,11 @@ def _surface(
     flight: Flight,
     noise: Noise,
     rng: np.random.Generator,
-) -> NDArray[np.float32]:
-    """Reflectance of the ground: covers, wear, paint, more wear, litter."""
-    image = lay_ground(world, frame, noise, rng)
+) -> tuple[NDArray[np.float32], NDArray[np.float32]]:
+    """Reflectance of the ground (covers, wear, paint, more wear, litter) and the relief of its covers."""
+    image, relief = lay_ground(world, frame, noise, rng)
     wear_surface(image, world, distance, frame, flight, noise, rng)
     paint_markings(image, world.paints, frame, noise, rng)
     wear_paint(image, world, distance, frame, flight, rng)
     litter_edges(image, world, distance, flight, noise, rng)
-    return image
+    return image, relief
