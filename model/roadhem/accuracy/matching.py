@@ -159,8 +159,8 @@ def _gaps(missed: Spans, truth: Segments) -> NDArray[np.float64]:
         & (missed.low[1:] <= 1e-9)
     )
     gap = np.cumsum(np.append(False, ~goes_on))
-    length = np.bincount(gap, weights=missed.high - missed.low)
-    return np.asarray(length[length > LEAST_GAP_M], dtype=np.float64)
+    piece = np.bincount(gap, weights=missed.high - missed.low)
+    return np.asarray(piece[piece > LEAST_GAP_M], dtype=np.float64)
 
 
 def _rms(spans: Spans, found: Segments, truth: Segments) -> float | None:

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
+
 SPREAD_LIMITS_M = (0.03, 0.06, 0.12, 0.25)
 """Upper limits of the steps but the last."""
 
@@ -25,5 +27,5 @@ def step_of(spread_m: float) -> int:
 def step_names() -> list[str]:
     """Return the steps in words."""
     limits = [f"{limit * 100:g}" for limit in SPREAD_LIMITS_M]
-    between = [f"{low}–{high} cm" for low, high in zip(limits, limits[1:], strict=False)]
+    between = [f"{low}–{high} cm" for low, high in pairwise(limits)]
     return [f"up to {limits[0]} cm", *between, f"over {limits[-1]} cm"]

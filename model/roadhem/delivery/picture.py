@@ -40,7 +40,11 @@ CAUTION = (
 )
 LEAST_WIDTH, MOST_SIDE = 1800, 2600
 """Pixels of the map: its width at least, its longer side at most (unless that would make it narrower)."""
-LEGEND_HEIGHT = 190
+LEGEND_SHARE = 0.095
+"""Height of the legend as a share of the width."""
+UNIT_INCHES = 19.5
+"""Width at which the legend's letters have the sizes given below."""
+DASHES = (0, (2.2, 1.6))
 MARGIN_M = 8.0
 """Ground shown around the lines."""
 DPI = 100
@@ -76,9 +80,10 @@ def draw_traced(
     pixels = min(MOST_SIDE / max(width_m, height_m), MOST_SIDE / width_m)
     width = max(LEAST_WIDTH, round(width_m * pixels))
     height = min(round(height_m * width / width_m), MOST_SIDE)
-    figure = Figure(figsize=(width / DPI, (height + LEGEND_HEIGHT) / DPI), dpi=DPI, facecolor=PAPER)
+    legend = round(LEGEND_SHARE * width)
+    figure = Figure(figsize=(width / DPI, (height + legend) / DPI), dpi=DPI, facecolor=PAPER)
     FigureCanvasAgg(figure)
-    share = LEGEND_HEIGHT / (height + LEGEND_HEIGHT)
+    share = legend / (height + legend)
     axes = figure.add_axes((0.0, share, 1.0, 1.0 - share))
     _show_backdrop(axes, image, bounds)
     shown = _Map(axes, max(width_m / width, height_m / height), layers, grid)
@@ -132,7 +137,7 @@ def _draw_lines(shown: _Map) -> None:
     for step, colour in enumerate(SPREAD_COLOURS):
         for dashed in (False, True):
             wanted = [path for path, yes in zip(paths, (steps == step) & (hidden == dashed), strict=True) if yes]
-            style: Any = (0, (2.2, 1.6)) if dashed else "solid"
+            style: Any = DASHES if dashed else "solid"
             shown.axes.add_collection(
                 LineCollection(wanted, colors=colour, linewidths=2.3, linestyles=style, capstyle="butt", zorder=4)
             )
@@ -187,35 +192,46 @@ def round_length(wanted: float) -> float:
 def _draw_legend(figure: Figure, share: float, layers: TracedLayers, title: str) -> None:
     panel = figure.add_axes((0.0, 0.0, 1.0, share))
     panel.set_axis_off()
+    unit = figure.get_figwidth() / UNIT_INCHES
     km = sum(row["length_m"] for row in layers.edges.rows) / 1000
     hidden = sum(row["hidden_m"] for row in layers.edges.rows)
-    panel.text(0.015, 0.86, title, fontsize=19, weight="bold", color=INK, va="center")
-    lines, lost = len(layers.edges.rows), len(layers.unplaced.rows)
-    counts = f"{lines} lines, {km:.2f} km, of which {hidden:.0f} m hidden; {lost} seeds unplaced"
-    panel.text(0.985, 0.86, counts, fontsize=15, color=INK, va="center", ha="right")
-    colours = [Line2D([], [], color=colour, lw=4.5, path_effects=_cased(6.5)) for colour in SPREAD_COLOURS]
-    first = panel.legend(
-        colours, step_names(), title="spread (1σ) of the line", loc="center left", bbox_to_anchor=(0.008, 0.47),
-        ncols=len(colours), **_legend_style(),
+    counts = (
+        f"{_count(len(layers.edges.rows), 'line')}, {km:.2f} km, of it {hidden:.0f} m hidden; "
+        f"{_count(len(layers.unplaced.rows), 'seed')} unplaced"
+    )
+    panel.text(0.015, 0.84, title, fontsize=19 * unit, weight="bold", color=INK, va="center")
+    panel.text(0.985, 0.84, counts, fontsize=15 * unit, color=INK, va="center", ha="right")
+    lines = [_key(colour, "solid", unit) for colour in SPREAD_COLOURS]
+    steps = panel.legend(
+        lines, step_names(), title="spread (1σ) of the line", loc="center left", bbox_to_anchor=(0.008, 0.47),
+        ncols=len(lines), **_legend_style(unit),
     )  # fmt: skip
-    panel.add_artist(first)
+    panel.add_artist(steps)
     marks = [
-        Line2D([], [], color=SPREAD_COLOURS[0], lw=4.5, ls=(0, (2.2, 1.6)), path_effects=_cased(6.5)),
+        _key(SPREAD_COLOURS[0], DASHES, unit),
         Line2D([], [], **_doubt_style()),
         Line2D([], [], **_cross_style()),
     ]
     panel.legend(
         marks, ["hidden, bridged", "doubt: look here first", "unplaced seed"], title="also shown",
-        loc="center right", bbox_to_anchor=(0.992, 0.47), ncols=3, **_legend_style(),
+        loc="center right", bbox_to_anchor=(0.992, 0.47), ncols=len(marks), **_legend_style(unit),
     )  # fmt: skip
-    panel.text(0.015, 0.1, CAUTION, fontsize=13.5, color=FAINT, va="center")
+    panel.text(0.015, 0.1, CAUTION, fontsize=13.5 * unit, color=FAINT, va="center")
 
 
-def _legend_style() -> dict[str, Any]:
+def _key(colour: str, dashes: Any, unit: float) -> Line2D:
+    return Line2D([], [], color=colour, lw=5 * unit, ls=dashes, path_effects=_cased(7 * unit))
+
+
+def _legend_style(unit: float) -> dict[str, Any]:
     return {
-        "frameon": False, "fontsize": 14, "title_fontsize": 13, "labelcolor": INK, "alignment": "left",
+        "frameon": False, "fontsize": 14 * unit, "title_fontsize": 13 * unit, "labelcolor": INK, "alignment": "left",
         "columnspacing": 1.6, "handlelength": 2.4,
     }  # fmt: skip
+
+
+def _count(number: int, what: str) -> str:
+    return f"{number} {what}{'' if number == 1 else 's'}"
 
 
 def _paths(table: Table, grid: WorkingGrid) -> list[NDArray[np.float64]]:

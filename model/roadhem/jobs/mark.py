@@ -151,7 +151,8 @@ def _surface_step(
     last = PAGE - 1
     left = surface[np.clip(i + di, 0, last), np.clip(j + dj, 0, last)]
     right = surface[np.clip(i - di, 0, last), np.clip(j - dj, 0, last)]
-    return np.abs(left - right)
+    step: NDArray[np.float64] = np.abs(left - right)
+    return step
 
 
 def _sure(trace: Trace, place: NDArray[np.float64]) -> bool:
@@ -171,4 +172,4 @@ def _pages(session: Session) -> list[tuple[int, int]]:
 
 
 def _values(fields: NDArray[np.int16], name: str) -> NDArray[np.float64]:
-    return fields[..., NET_FIELDS.index(name)] * QUANTUM.get(name, 1e-4)
+    return np.asarray(fields[..., NET_FIELDS.index(name)] * QUANTUM.get(name, 1e-4), dtype=np.float64)

@@ -79,6 +79,8 @@ class Session(Protocol):
         """Return how many working pixels the net has looked at so far."""
 
 
+TOO_SHORT = "the edge beside it is too short to be a line"
+
 Opener = Callable[[Inputs], Session]
 
 
@@ -149,7 +151,10 @@ class TilesSession:
         """Trace from points."""
         from roadhem.tracing.trace import trace_seed
 
-        return trace_seed(self.store, [(float(x), float(y)) for x, y in points])
+        outcome = trace_seed(self.store, [(float(x), float(y)) for x, y in points])
+        if isinstance(outcome, Trace) and len(outcome.points) < 2:
+            return Unplaced(TOO_SHORT)
+        return outcome
 
     def computed_pixels(self) -> int:
         """Return how many working pixels the net has looked at so far."""

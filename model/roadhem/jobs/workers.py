@@ -38,7 +38,7 @@ class Batch(NamedTuple):
 CHUNK = 8
 """Seeds handed out at once: neighbours, so that they share pages of fields."""
 
-OUTSIDE = "it lies outside all tiles"
+OUTSIDE = "the seed lies outside all tiles"
 
 
 def trace_here(session: Session, tasks: Sequence[Task]) -> Iterator[Batch]:

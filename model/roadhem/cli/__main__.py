@@ -1,0 +1,5 @@
+"""Lets `python -m roadhem.cli` stand for `roadhem`."""
+
+from roadhem.cli.main import main
+
+main()
