@@ -102,9 +102,13 @@ class Model:
     def _check(self) -> None:
         """Refuse a card that says something else than CONTRACT, and a graph that does something else."""
         strange = [key for key, value in CONTRACT.items() if not _same(self.card.get(key), value)]
-        missing = [key for key in ("receptive_field", "calibration") if key not in self.card]
-        if strange or missing:
-            what = ", ".join(strange + missing)
+        for key, part in (("receptive_field", "halo"), ("calibration", "calibration")):
+            try:
+                getattr(self, part)
+            except (KeyError, TypeError, ValueError):
+                strange.append(key)
+        if strange:
+            what = ", ".join(strange)
             raise BadInput(f"The model {self.name} was made for another version of Roadhem ({what}); use another.")
         try:
             session = self.session(STRIDE, STRIDE, 1)
