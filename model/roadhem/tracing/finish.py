@@ -5,17 +5,19 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from roadhem.tracing.follow import KIND, LEFT, RIGHT, SIGHT, SIGMA, X, Y
+from roadhem.tracing.follow import KIND, LEFT, RIGHT, SIGHT, SIGMA, TRAVEL, X, Y
 from roadhem.tracing.result import Trace
 from roadhem.tracing.settings import Settings
-from roadhem.tracing.walk import Line, turned
+from roadhem.tracing.shape import measured, sharpen, smooth
+from roadhem.tracing.stretch import turned
+from roadhem.tracing.walk import Line
 
 
 def oriented(line: Line) -> Line:
     """Return the line with the drive-over surface on its left."""
     if np.sum((line.rows[:, LEFT] - line.rows[:, RIGHT]) * spans(line.rows)) >= 0:
         return line
-    return Line(turned(line.rows[::-1]), line.end_reason, line.start_reason, line.closed)
+    return Line(turned(line.rows), line.end_reason, line.start_reason, line.closed)
 
 
 def spans(rows: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -41,10 +43,9 @@ def classes(probabilities: NDArray[np.float64], at_m: NDArray[np.float64], half_
 def finish(line: Line, settings: Settings) -> Trace:
     """Return the trace of a followed line."""
     line = oriented(line)
-    rows = line.rows
-    if line.closed:
-        rows = np.concatenate([rows[:-1], rows[:1]])
-    at_m = np.concatenate([[0.0], np.cumsum(np.hypot(*np.diff(rows[:, [X, Y]], axis=0).T))])
+    rows = np.concatenate([line.rows, line.rows[:1]]) if line.closed else line.rows
+    rows = smooth(measured(sharpen(measured(rows), settings)), line.closed, settings)
+    at_m = measured(rows)[:, TRAVEL]
     return Trace(
         points=rows[:, [X, Y]].copy(),
         sigma=rows[:, SIGMA].copy(),

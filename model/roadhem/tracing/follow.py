@@ -24,19 +24,20 @@ from roadhem.tracing.sheet import (
 FADED, ENDED, LOOPED, OVERLAP, LIMIT, FULL = range(4, 10)
 """Why following stopped, beside what `sample` may meet."""
 
-X, Y, TX, TY, BEND, TRAVEL, SIGMA, KIND, SIGHT, NEAR, BESIDE, LEFT, RIGHT, COAST = (
-    0, 1, 2, 3, 4, 5, 6, 7, 10, 13, 14, 15, 16, 17,
+X, Y, TX, TY, BEND, TRAVEL, SIGMA, KIND, SIGHT, NEAR, BESIDE, LEFT, RIGHT, COAST, FORM = (
+    0, 1, 2, 3, 4, 5, 6, 7, 10, 13, 14, 15, 16, 17, 18,
 )  # fmt: skip
 """Columns of a row: place, heading, curvature to the left (1/m), metres travelled, standard error (m), three
 probabilities of kind, three of sight, nearness, nearness of other lines, drive-over surface left and right, metres
-since the line was last seen."""
+since the line was last seen, and what the point is: one of the forms."""
 
-COLUMNS = 18
+COLUMNS = 19
+
+FOLLOWED, CORNER, BRIDGE, BY_HAND = range(4)
+"""Forms of a point: found on the line, the vertex of a sharp corner, across a hidden stretch, given by a person."""
 
 SIDE_M = 0.6
 """How far left and right of the line the drive-over surface is read."""
-
-_STRAY_M = 3.0
 
 
 @njit(cache=True)
@@ -69,22 +70,21 @@ def predict(x, y, tx, ty, bend, step):  # type: ignore[no-untyped-def]
 
 
 @njit(cache=True)
-def along_itself(rows, n, earlier, x, y, tx, ty, travel, pace):  # type: ignore[no-untyped-def]
-    """Whether a place lies on the line drawn so far, or on the other half of it."""
-    near = pace.overlap * pace.overlap
-    for k in range(n):
+def met(rows, n, pace):  # type: ignore[no-untyped-def]
+    """Index of the row drawn long before on which the last of n rows lies, -1 if there is none."""
+    here = rows[n - 1]
+    for k in range(n - 1):
         row = rows[k]
-        if travel - row[TRAVEL] < _STRAY_M:
+        if here[TRAVEL] - row[TRAVEL] < pace.loop_least:
             break
-        if (row[X] - x) ** 2 + (row[Y] - y) ** 2 < near and abs(row[TX] * tx + row[TY] * ty) > 0.8:
-            return True
-    for k in range(len(earlier)):
-        row = earlier[k]
-        if travel + row[TRAVEL] < _STRAY_M:
+        dx, dy = here[X] - row[X], here[Y] - row[Y]
+        if abs(dx) > pace.step_max or abs(dy) > pace.step_max:
             continue
-        if (row[X] - x) ** 2 + (row[Y] - y) ** 2 < near and abs(row[TX] * tx + row[TY] * ty) > 0.8:
-            return True
-    return False
+        along, aside = dx * row[TX] + dy * row[TY], dy * row[TX] - dx * row[TY]
+        parallel = abs(row[TX] * here[TX] + row[TY] * here[TY]) > 0.8
+        if parallel and abs(along) <= 0.6 * pace.step_max and abs(aside) <= pace.overlap:
+            return k
+    return -1
 
 
 @njit(cache=True)
@@ -119,58 +119,52 @@ def advance(table, origin, last, pace, values):  # type: ignore[no-untyped-def]
 
 
 @njit(cache=True)
-def follow(table, origin, rows, n, budget, loop, earlier, pace, values):  # type: ignore[no-untyped-def]
+def follow(table, origin, rows, n, budget, pace, values):  # type: ignore[no-untyped-def]
     """Follow the line from the last row on.
 
     Parameters
     ----------
-    rows : (capacity, COLUMNS) float64, the first n of them filled.
-    budget : metres of travel allowed.
-    loop : whether coming back to row 0 closes the line.
-    earlier : (m, COLUMNS) rows of the other half, walked before.
+    rows : (capacity, COLUMNS) float64, the first n of them filled, in order along the line.
+    budget : TRAVEL at which to stop.
 
     Returns
     -------
-    code : why it stopped. n : rows filled now; after MISSING or FULL the call can be repeated with this n. stay :
-        rows filled when a page was missed. The last row is one where the line was seen.
+    code : why it stopped; after MISSING or FULL the call can be repeated with the n returned. n : rows filled now.
+        The last row is one where the line was seen, unless the tiles end there. k : with LOOPED and OVERLAP the row
+        met in the same and in the opposite heading.
     """
     while True:
         if n >= len(rows):
-            return FULL, n
+            return FULL, n, -1
         last = rows[n - 1]
         if last[TRAVEL] >= budget:
-            return LIMIT, n
+            return LIMIT, n, -1
         code, x, y, tx, ty, step, seen = advance(table, origin, last, pace, values)
-        if code == MISSING:
-            return code, n
-        if code != VALID:
-            return code, n
-        past = -(values[0, DX] * tx + values[0, DY] * ty)
-        if past > pace.beyond and values[0, NEARNESS] >= pace.present:
-            code = ENDED
-        elif not seen and last[COAST] + step > pace.coast:
-            code = FADED
-        if code != VALID:
+        if code == VALID:
+            past = -(values[0, DX] * tx + values[0, DY] * ty)
+            if past > pace.beyond and values[0, NEARNESS] >= pace.present:
+                code = ENDED
+            elif not seen and last[COAST] + step > pace.coast:
+                code = FADED
+            else:
+                code = put_row(table, origin, rows[n], x, y, tx, ty, values)
+        if code in (ENDED, FADED):
             while n > 1 and rows[n - 1, COAST] > 0.0:
                 n -= 1
-            return code, n
-        row = rows[n]
-        code = put_row(table, origin, row, x, y, tx, ty, values)
         if code != VALID:
-            return code, n
+            return code, n, -1
+        row = rows[n]
         row[TRAVEL] = last[TRAVEL] + step
         row[COAST] = 0.0 if seen else last[COAST] + step
         row[BEND] = last[BEND]
+        row[FORM] = FOLLOWED
         if seen:
             turn = math.atan2(last[TX] * ty - last[TY] * tx, last[TX] * tx + last[TY] * ty)
             fresh = 1.0 - math.exp(-step / pace.memory)
             bend = (1.0 - fresh) * last[BEND] + fresh * turn / step
             row[BEND] = min(max(bend, -pace.bend_max), pace.bend_max)
         n += 1
-        if loop and row[TRAVEL] >= pace.loop_least:
-            first = rows[0]
-            gap = math.hypot(x - first[X], y - first[Y])
-            if gap < pace.loop_close and first[TX] * tx + first[TY] * ty > 0.8:
-                return LOOPED, n
-        if along_itself(rows, n, earlier, x, y, tx, ty, row[TRAVEL], pace):
-            return OVERLAP, n
+        k = met(rows, n, pace)
+        if k >= 0:
+            same = rows[k, TX] * tx + rows[k, TY] * ty > 0.0
+            return LOOPED if same else OVERLAP, n, k

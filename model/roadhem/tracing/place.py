@@ -10,7 +10,8 @@ from numpy.typing import NDArray
 
 from roadhem.tracing.follow import BESIDE, COLUMNS, LEFT, NEAR, RIGHT, TX, TY, X, Y, put_row
 from roadhem.tracing.result import Unplaced
-from roadhem.tracing.ridge import axis_at, buffer, lateral, settle
+from roadhem.tracing.ridge import axis_at, buffer, lateral
+from roadhem.tracing.scout import lines_at
 from roadhem.tracing.settings import Pace, Settings
 from roadhem.tracing.sheet import MISSING, NO_DATA, OUTSIDE, VALID, Sheet, sample
 
@@ -18,19 +19,6 @@ SOLVED_M = 1e-10
 SOLVE_ITERATIONS = 40
 ROUNDED = 6
 """Decimals (of a metre) to which a canonical point is rounded."""
-
-
-@njit(cache=True)
-def scout(table, origin, places, pace, rows, values):  # type: ignore[no-untyped-def]
-    """Settle every place; rows[k] is filled, and rows[k, NEAR] is -1 where there is no line."""
-    for k in range(len(places)):
-        rows[k, NEAR] = -1.0
-        code, x, y, tx, ty, clear = settle(table, origin, places[k, 0], places[k, 1], 0.0, 0.0, pace, values)
-        if code == VALID and clear >= pace.axis_clear:
-            code = put_row(table, origin, rows[k], x, y, tx, ty, values)
-        if code == MISSING:
-            return code
-    return VALID
 
 
 def first_fix(
@@ -46,8 +34,7 @@ def first_fix(
     steps = np.arange(-reach, reach + 1) * settings.scout_m
     grid = np.stack(np.meshgrid(steps, steps), axis=-1).reshape(-1, 2)
     places = seed + grid[np.hypot(grid[:, 0], grid[:, 1]) <= radius_m + 1e-9]
-    rows = np.zeros((len(places), COLUMNS))
-    sheet.run(scout, places, settings.pace, rows, buffer())
+    rows = lines_at(sheet, places, settings)
     away = np.hypot(rows[:, X] - seed[0], rows[:, Y] - seed[1])
     rows, away = rows[(away <= radius_m) & (rows[:, NEAR] >= 0)], away[(away <= radius_m) & (rows[:, NEAR] >= 0)]
     within = f"within {radius_m:g} m of the seed"

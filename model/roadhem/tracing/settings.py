@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import NamedTuple
 
@@ -25,9 +26,8 @@ class Pace(NamedTuple):
     memory : metres over which the curvature is averaged.
     coast : metres followed without seeing the line.
     bend_max : 1/m, the sharpest curvature carried into a prediction.
-    loop_close : metres between a loop's end and its start.
     loop_least : metres, the shortest loop.
-    overlap : metres within which a line counts as running along itself.
+    overlap : metres beside itself within which a line counts as running along itself.
     """
 
     step_max: float = 0.4
@@ -45,7 +45,6 @@ class Pace(NamedTuple):
     memory: float = 1.0
     coast: float = 1.2
     bend_max: float = 1.25
-    loop_close: float = 0.3
     loop_least: float = 4.0
     overlap: float = 0.15
 
@@ -81,6 +80,64 @@ class Settings:
     """Metres between the fixed lines x = k, y = k at which canonical points lie."""
     around_m: float = 25.0
     """Metres either way within which the canonical point of a line cut by its limit is looked for."""
+
+    # Both ways along the line.
+    loop_tail_m: float = 4.0
+    """Metres of its beginning that a loop may lose where it closes."""
+
+    # Sharp corners.
+    corner_rings_m: tuple[float, ...] = (0.7, 1.0, 1.4, 2.0)
+    """Radii around the end at which lines leading away are looked for."""
+    corner_blur_m: float = 0.6
+    """Metres either side of a corner in which the fields bend ..."""
+    corner_open_m: float = 0.6
+    """... at the least; at an acute one, as far as its legs are less than this apart."""
+    corner_leg_m: float = 2.4
+    """Metres either side of a corner to which straights are fitted."""
+    corner_proof_m: float = 1.2
+    """Metres a line beyond a corner must be followed."""
+    corner_reach_m: float = 0.8
+    """Metres from where following stopped within which the straights must meet."""
+    corner_least: float = math.radians(20.0)
+    corner_most: float = math.radians(155.0)
+    corner_apart: float = math.radians(20.0)
+    corner_tries: int = 4
+
+    # Hidden stretches.
+    bridge_m: float = 15.0
+    """Longest stretch bridged ..."""
+    bridge_ended_m: float = 3.0
+    """... and where the line was seen to end."""
+    bridge_grid_m: float = 0.3
+    """Metres between the places tried across the arc."""
+    bridge_memory_m: float = 9.0
+    """Metres of line before the gap whose arc is continued."""
+    bridge_drop_m: float = 0.8
+    """Metres of line dropped at either side of a gap: the fields bend there."""
+    bridge_aside_m: float = 0.4
+    bridge_aside_share: float = 0.14
+    """A landing lies within this and this share of the arc beside it."""
+    bridge_turn: float = 16.0
+    bridge_turn_per_m: float = 1.8
+    """Degrees, and degrees per metre of arc, by which a landing may turn from it."""
+    bridge_proof_m: float = 3.6
+    """Metres that must be followed surely before and after a gap."""
+    bridge_spread: float = 0.025
+    """Growth of the standard error with the distance from the nearer end of a bridge, metre per metre."""
+    bridge_tries: int = 6
+
+    # The clean curve.
+    sharpen_chord_m: float = 0.8
+    sharpen_least: float = math.radians(25.0)
+    """A turn between chords of this length by at least this may be a corner that the fields rounded,"""
+    sharpen_within: float = 0.3
+    """... if its legs turn by no more than this share of it"""
+    sharpen_off_m: float = 0.2
+    """... and the vertex lies no further from the points followed."""
+    smooth_m: float = 1.2
+    """Half window of the averaging along the line."""
+    smooth_bend: float = 0.5
+    """Largest turn, radians, in half a window."""
 
     # Finishing.
     attributes_m: float = 1.0

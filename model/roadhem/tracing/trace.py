@@ -11,12 +11,13 @@ from numpy.typing import NDArray
 
 from roadhem.errors import RoadhemError
 from roadhem.tracing.finish import finish
-from roadhem.tracing.follow import X, Y
+from roadhem.tracing.follow import LIMIT, TRAVEL, X, Y
 from roadhem.tracing.place import canonical, first_fix
 from roadhem.tracing.result import Trace, Unplaced
 from roadhem.tracing.settings import SETTINGS, Settings
 from roadhem.tracing.sheet import Absent, FieldView, Sheet
-from roadhem.tracing.walk import Line, both_ways
+from roadhem.tracing.stretch import Rows
+from roadhem.tracing.walk import Line, Run, plain, whole
 
 LIMIT_M = 2000.0
 
@@ -72,27 +73,24 @@ def follow_seed(
     fix = first_fix(sheet, seed, radius_m, settings)
     if isinstance(fix, Unplaced):
         return fix
-    line = both_ways(sheet, fix, limit_m, settings)
+    start = fix
     for _ in range(3):
-        start = canonical(sheet, near_part(line, seed, settings), settings)
-        if start is None or np.array_equal(start[:2], fix[:2]):
+        run = plain(sheet, start, limit_m, settings)
+        better = canonical(sheet, near_part(run, seed, settings), settings)
+        if better is None or np.array_equal(better[:2], start[:2]):
             break
-        fresh = both_ways(sheet, start, limit_m, settings)
-        if not passes(fresh, seed, radius_m):
-            break
-        line, fix = fresh, start
-    return line
+        start = better
+    line = whole(sheet, start, limit_m, settings)
+    return line if passes(line, seed, radius_m) else whole(sheet, fix, limit_m, settings)
 
 
-def near_part(line: Line, seed: NDArray[np.float64], settings: Settings) -> NDArray[np.float64]:
+def near_part(run: Run, seed: NDArray[np.float64], settings: Settings) -> Rows:
     """Rows in which the canonical point is looked for: all, or those near the seed where the limit cut the line."""
-    if "length_limit" not in (line.start_reason, line.end_reason):
-        return line.rows
-    away = np.hypot(line.rows[:, X] - seed[0], line.rows[:, Y] - seed[1])
-    nearest = int(np.argmin(away))
-    steps = np.hypot(*np.diff(line.rows[:, [X, Y]], axis=0).T)
-    at_m = np.concatenate([[0.0], np.cumsum(steps)])
-    return line.rows[np.abs(at_m - at_m[nearest]) <= settings.around_m]
+    rows = run.ahead.rows
+    if LIMIT not in (run.start_code, run.ahead.code):
+        return rows
+    nearest = int(np.argmin(np.hypot(rows[:, X] - seed[0], rows[:, Y] - seed[1])))
+    return rows[np.abs(rows[:, TRAVEL] - rows[nearest, TRAVEL]) <= settings.around_m]
 
 
 def passes(line: Line, seed: NDArray[np.float64], radius_m: float) -> bool:

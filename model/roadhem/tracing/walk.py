@@ -5,28 +5,13 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
-from roadhem.tracing.follow import (
-    BEND,
-    COLUMNS,
-    ENDED,
-    FADED,
-    FULL,
-    LEFT,
-    LIMIT,
-    LOOPED,
-    OVERLAP,
-    RIGHT,
-    SIGHT,
-    TRAVEL,
-    TX,
-    TY,
-    follow,
-)
-from roadhem.tracing.ridge import buffer
+from roadhem.tracing.bridge import bridge
+from roadhem.tracing.corner import turn_corner
+from roadhem.tracing.follow import ENDED, FADED, LIMIT, LOOPED, OVERLAP, SIGHT, TRAVEL
 from roadhem.tracing.settings import Settings
-from roadhem.tracing.sheet import MISSING, NO_DATA, OUTSIDE, Sheet
+from roadhem.tracing.sheet import NO_DATA, OUTSIDE, Sheet
+from roadhem.tracing.stretch import Rows, Walked, turned, walk_on
 
 REASON = {
     OUTSIDE: "tile_border",
@@ -37,54 +22,62 @@ REASON = {
     LIMIT: "length_limit",
 }
 
-CAPACITY = 512
-
 
 @dataclass(frozen=True)
 class Line:
     """A line as followed: rows in order, with the reason at either end."""
 
-    rows: NDArray[np.float64]
+    rows: Rows
     start_reason: str
     end_reason: str
     closed: bool
 
 
-def turned(row: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Return the row heading the other way."""
-    row = row.copy()
-    row[..., [TX, TY, BEND, TRAVEL]] *= -1.0
-    row[..., [LEFT, RIGHT]] = row[..., [RIGHT, LEFT]]
-    return row
+@dataclass(frozen=True)
+class Run:
+    """What following gave both ways from the row with TRAVEL 0, and the code with which its start stopped."""
+
+    ahead: Walked
+    start_code: int
 
 
-def one_way(
-    sheet: Sheet, start: NDArray[np.float64], budget_m: float, earlier: NDArray[np.float64], settings: Settings
-) -> tuple[NDArray[np.float64], str, bool]:
-    """Follow from a row on; rows (the start first), the reason it stopped, whether it closed."""
-    rows, n = np.zeros((CAPACITY, COLUMNS)), 1
-    rows[0] = start
-    values = buffer()
-    while True:
-        code, n = follow(sheet.table, sheet.origin, rows, n, budget_m, True, earlier, settings.pace, values)
-        if code == MISSING:
-            sheet.fetch()
-        elif code == FULL:
-            rows = np.concatenate([rows, np.zeros_like(rows)])
-        else:
-            break
-    rows = rows[:n]
-    if code == FADED:
-        return rows, "end" if rows[-1, SIGHT] > 0.5 else "unsure", False
-    return rows, REASON[code], code == LOOPED
+def plain(sheet: Sheet, start: Rows, limit_m: float, settings: Settings) -> Run:
+    """Follow from a row both ways, `limit_m` in all, without a look round corners or across gaps."""
+    start = start[None].copy()
+    start[:, TRAVEL] = 0.0
+    ahead = walk_on(sheet, start, 0.5 * limit_m, settings)
+    if ahead.code == LOOPED:
+        return Run(ahead, ahead.code)
+    back = walk_on(sheet, turned(ahead.rows), 0.5 * limit_m, settings)
+    return Run(ahead._replace(rows=turned(back.rows)), back.code)
 
 
-def both_ways(sheet: Sheet, start: NDArray[np.float64], limit_m: float, settings: Settings) -> Line:
-    """Follow from a row in its heading, then the other way, `limit_m` in all."""
-    start = start.copy()
-    start[TRAVEL] = 0.0
-    rows, end_reason, closed = one_way(sheet, start, 0.5 * limit_m, np.zeros((0, COLUMNS)), settings)
-    if closed:
-        return Line(rows, "looped", "looped", True)
-    back, start_reason, _ = one_way(sheet, turned(start), 0.5 * limit_m, rows, settings)
-    return Line(np.concatenate([turned(back[:0:-1]), rows]), start_reason, end_reason, False)
+def further(sheet: Sheet, walked: Walked, budget_m: float, settings: Settings) -> tuple[Walked, str]:
+    """Carry on round corners and across gaps from where following stopped; the rows, and why the line stops."""
+    while walked.code in (ENDED, FADED):
+        rows = turn_corner(sheet, walked.rows, settings)
+        if rows is None:
+            rows = bridge(sheet, walked.rows, walked.code == ENDED, settings)
+        if rows is None:
+            clear = walked.code == ENDED or walked.rows[-1, SIGHT] > 0.5
+            return walked, "end" if clear else "unsure"
+        walked = walk_on(sheet, rows, budget_m, settings)
+    return walked, REASON[walked.code]
+
+
+def whole(sheet: Sheet, start: Rows, limit_m: float, settings: Settings) -> Line:
+    """Follow from a row both ways as far as the line can be carried, `limit_m` in all."""
+    run = plain(sheet, start, limit_m, settings)
+    ahead, end_reason = further(sheet, run.ahead, 0.5 * limit_m, settings)
+    rows = ahead.rows
+    if ahead.code == LOOPED and rows[ahead.met, TRAVEL] - rows[0, TRAVEL] <= settings.loop_tail_m:
+        return Line(_ring(rows, ahead.met), "looped", "looped", True)
+    back, start_reason = further(sheet, Walked(turned(rows), run.start_code, -1), 0.5 * limit_m, settings)
+    return Line(turned(back.rows), start_reason, end_reason, False)
+
+
+def _ring(rows: Rows, met: int) -> Rows:
+    """Rows of a loop, each place once, beginning at the row with TRAVEL 0, or the first after it."""
+    ring = rows[met:-1]
+    begin = int(np.argmax(ring[:, TRAVEL] >= 0.0))
+    return np.concatenate([ring[begin:], ring[:begin]])

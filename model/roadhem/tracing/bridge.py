@@ -1,0 +1,174 @@
+"""Across hidden stretches: the arc continued, landed on a line that carries on, and drawn as a smooth curve."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+from numpy.typing import NDArray
+
+from roadhem.tracing.corner import turn_of
+from roadhem.tracing.follow import (
+    BESIDE,
+    BRIDGE,
+    COAST,
+    COLUMNS,
+    CORNER,
+    FORM,
+    KIND,
+    LEFT,
+    NEAR,
+    RIGHT,
+    SIGHT,
+    SIGMA,
+    TRAVEL,
+    TX,
+    TY,
+    X,
+    Y,
+)
+from roadhem.tracing.scout import lines_at
+from roadhem.tracing.settings import Settings
+from roadhem.tracing.sheet import NO_DATA, OUTSIDE, Sheet
+from roadhem.tracing.stretch import LANDED, Arc, Rows, fit_arc, side, turned, walk_on
+
+
+def bridge(sheet: Sheet, rows: Rows, ended: bool, settings: Settings) -> Rows | None:
+    """Continue beyond a hidden stretch where following stopped.
+
+    Parameters
+    ----------
+    ended : whether the line was seen to end: then only a short gap is bridged.
+
+    Returns
+    -------
+    The rows up to the gap without the last of them, where the fields bend; the rows across; and the rows proved
+    beyond. None where nothing beyond continues the arc.
+    """
+    last_corner = np.flatnonzero(rows[:, FORM] == CORNER)
+    solid = rows[last_corner[-1] + 1 :] if len(last_corner) else rows
+    solid = solid[solid[-1, TRAVEL] - solid[:, TRAVEL] <= settings.bridge_memory_m]
+    if solid[-1, TRAVEL] - solid[0, TRAVEL] < settings.bridge_proof_m:
+        return None
+    kept = solid[solid[-1, TRAVEL] - solid[:, TRAVEL] >= settings.bridge_drop_m]
+    arc = fit_arc(kept, settings.bridge_memory_m / 2)
+    surface = side(kept)
+    longest = settings.bridge_ended_m if ended else settings.bridge_m
+    landings = _landings(sheet, arc, surface, longest, settings)
+    landings = [row for row in landings if _ahead(row, rows[-1]) >= settings.pace.step_max]
+    tried: list[Rows] = []
+    for row in landings:
+        if any(_lies_on(row, proof) for proof in tried):
+            continue
+        proof, sure = _proof(sheet, row, rows[-1], settings)
+        if sure and side(proof) * surface > 0:
+            before = rows[rows[:, TRAVEL] <= kept[-1, TRAVEL]]
+            return _across(sheet, before, arc, proof, settings)
+        tried.append(proof)
+        if len(tried) >= settings.bridge_tries:
+            return None
+    return None
+
+
+def _landings(sheet: Sheet, arc: Arc, surface: float, longest_m: float, settings: Settings) -> list[Rows]:
+    """Rows of lines ahead that continue the arc, the likeliest first."""
+    ahead = np.arange(settings.bridge_drop_m, longest_m + settings.bridge_drop_m, settings.pace.step_max)
+    middle, heading = arc.at(ahead)
+    wide = settings.bridge_aside_m + settings.bridge_aside_share * ahead
+    places, owner = [], []
+    for k in range(len(ahead)):
+        lateral = np.arange(-wide[k], wide[k] + 1e-9, settings.bridge_grid_m)
+        normal = np.array([-math.sin(heading[k]), math.cos(heading[k])])
+        places.append(middle[k] + lateral[:, None] * normal)
+        owner.append(np.full(len(lateral), k))
+    index = np.concatenate(owner)
+    headings = np.stack([np.cos(heading), np.sin(heading)], axis=-1)[index]
+    found = lines_at(sheet, np.concatenate(places), settings, headings)
+    away = found[:, [X, Y]] - middle[index]
+    aside = away[:, 1] * headings[:, 0] - away[:, 0] * headings[:, 1]
+    along = np.abs(np.sum(away * headings, axis=1))
+    turn = np.arccos(np.clip(np.sum(found[:, [TX, TY]] * headings, axis=1), -1.0, 1.0))
+    allowed = np.radians(settings.bridge_turn + settings.bridge_turn_per_m * ahead[index])
+    fits = (found[:, NEAR] >= settings.sure) & (np.abs(aside) <= wide[index]) & (turn <= allowed)
+    fits &= (along <= settings.pace.step_max) & ((found[:, LEFT] - found[:, RIGHT]) * surface > 0.1)
+    cost = (aside / wide[index]) ** 2 + (turn / allowed) ** 2 + ahead[index] / settings.bridge_m - found[:, NEAR]
+    order = np.lexsort((found[:, Y], found[:, X], np.round(cost, 6)))
+    return [found[k] for k in order if fits[k]]
+
+
+def _ahead(row: Rows, end: Rows) -> float:
+    return float((row[X] - end[X]) * end[TX] + (row[Y] - end[Y]) * end[TY])
+
+
+def _lies_on(row: Rows, line: Rows) -> bool:
+    return bool(np.min(np.hypot(line[:, X] - row[X], line[:, Y] - row[Y])) < 0.3)
+
+
+def _proof(sheet: Sheet, row: Rows, end: Rows, settings: Settings) -> tuple[Rows, bool]:
+    """The line through a landing, from its first sight beyond the end to as far as proves it; whether it does."""
+    start = row[None].copy()
+    start[0, [TRAVEL, COAST]] = 0.0
+    back, _, _ = walk_on(sheet, turned(start), settings.bridge_m, settings)
+    whole, code, _ = walk_on(sheet, turned(back), settings.bridge_proof_m + settings.bridge_drop_m, settings)
+    ahead = (whole[:, X] - end[X]) * end[TX] + (whole[:, Y] - end[Y]) * end[TY]
+    behind = np.flatnonzero((ahead < settings.pace.step_max) & (whole[:, TRAVEL] < 0.0))
+    whole = whole[int(np.max(behind, initial=-1)) + 1 :]
+    seen = whole[whole[:, COAST] == 0.0]
+    length = whole[-1, TRAVEL] - whole[0, TRAVEL]
+    least = settings.bridge_proof_m + settings.bridge_drop_m
+    sure = length >= least or (code in (OUTSIDE, NO_DATA) and length >= 0.5 * least)
+    return whole, bool(sure and np.mean(seen[:, NEAR]) >= settings.sure)
+
+
+def _across(sheet: Sheet, before: Rows, arc: Arc, proof: Rows, settings: Settings) -> Rows | None:
+    """Join what was walked before a gap and what was proved beyond it by a smooth curve."""
+    begun = proof[proof[:, TRAVEL] - proof[0, TRAVEL] >= settings.bridge_drop_m]
+    landing = fit_arc(turned(begun), settings.bridge_memory_m / 2)
+    start, end = np.array([arc.x, arc.y]), np.array([landing.x, landing.y])
+    leave = np.array([math.cos(arc.heading), math.sin(arc.heading)])
+    arrive = -np.array([math.cos(landing.heading), math.sin(landing.heading)])
+    reach = float(np.hypot(*(end - start)))
+    if (end - start) @ leave <= 0 or reach > settings.bridge_m + 4.0 * settings.bridge_drop_m:
+        return None
+    if abs(turn_of(leave, arrive)) > math.pi / 2:
+        return None
+    span = hermite(start, leave, end, arrive, settings.pace.step_max)
+    crossing = _bridge_rows(sheet, span, before[-1], begun[0], settings)
+    rest = begun[:LANDED].copy()
+    rest[:, TRAVEL] += crossing[-1, TRAVEL] + settings.pace.step_max - rest[0, TRAVEL]
+    return np.concatenate([before, crossing, rest])
+
+
+def hermite(
+    a: NDArray[np.float64], ta: NDArray[np.float64], b: NDArray[np.float64], tb: NDArray[np.float64], step_m: float
+) -> NDArray[np.float64]:
+    """Inner points (n, 4: x, y, heading) of the cubic from a to b with unit tangents ta, tb, about step_m apart.
+
+    Where both tangents fit one circular arc, the cubic follows that arc: the common choice of 4/3 tan(turn / 4) radii
+    for the handles of a cubic arc.
+    """
+    reach = float(np.hypot(*(b - a)))
+    turn = abs(turn_of(ta, tb))
+    pull = reach * (1.0 if turn < 1e-3 else 2.0 * math.tan(turn / 4) / math.sin(turn / 2))
+    u = np.linspace(0.0, 1.0, max(3, math.ceil(reach / step_m) + 1))[1:-1, None]
+    points = (2 * u**3 - 3 * u**2 + 1) * a + (u**3 - 2 * u**2 + u) * pull * ta
+    points = points + (3 * u**2 - 2 * u**3) * b + (u**3 - u**2) * pull * tb
+    heading = (6 * u**2 - 6 * u) * (a - b) + (3 * u**2 - 4 * u + 1) * pull * ta + (3 * u**2 - 2 * u) * pull * tb
+    return np.concatenate([points, heading / np.hypot(*heading.T)[:, None]], axis=1)
+
+
+def _bridge_rows(sheet: Sheet, span: NDArray[np.float64], before: Rows, after: Rows, settings: Settings) -> Rows:
+    """Rows along a bridge: properties between those of its ends, a spread that grows towards its middle."""
+    rows = np.zeros((len(span), COLUMNS))
+    rows[:, [X, Y, TX, TY]] = span
+    steps = np.hypot(*np.diff(np.concatenate([before[None, [X, Y]], span[:, :2], after[None, [X, Y]]]), axis=0).T)
+    s = np.cumsum(steps)
+    share = (s[:-1] / s[-1])[:, None]
+    mixed = [*range(KIND, KIND + 3), BESIDE, LEFT, RIGHT, SIGMA]
+    rows[:, mixed] = (1 - share) * before[mixed] + share * after[mixed]
+    nearer = np.minimum(s[:-1], s[-1] - s[:-1])
+    rows[:, SIGMA] = np.hypot(rows[:, SIGMA], settings.bridge_spread * nearer)
+    rows[:, SIGHT + 2] = 1.0
+    rows[:, TRAVEL] = before[TRAVEL] + s[:-1]
+    rows[:, FORM] = BRIDGE
+    return rows
