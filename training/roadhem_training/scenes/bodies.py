@@ -73,13 +73,9 @@ def draw_bodies(
 
 def lean_of(body: Body, frame: Frame, flight: Flight) -> tuple[float, float]:
     """Displacement (east, north, metres) of a body's top in the picture."""
-    if flight.lean_spread == 0.0:
-        return 0.0, 0.0
     middle = body.footprint.centroid
-    half = frame.rows * frame.pixel / 2
-    east = flight.lean[0] + flight.lean_spread * (middle.x - half)
-    north = flight.lean[1] + flight.lean_spread * (middle.y - half)
-    return float(east * body.top), float(north * body.top)
+    east, north = flight.lean_at(middle.x, middle.y, frame)
+    return east * body.top, north * body.top
 
 
 def shade_at(body: Body, dark: NDArray[np.float32], frame: Frame, flight: Flight) -> float:

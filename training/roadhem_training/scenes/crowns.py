@@ -1,34 +1,31 @@
-"""Trees and bushes from above: domes of leaf clumps, lit from the sun's side."""
+"""Trees and bushes from above: domes of leaf clumps, lit from the sun's side; bare ones as branches."""
 
 from __future__ import annotations
-
-from dataclasses import replace
 
 import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from roadhem_training.scenes.branches import draw_segments, drop, is_bare, skeleton
 from roadhem_training.scenes.coverage import Frame
 from roadhem_training.scenes.flight import Flight
 from roadhem_training.scenes.light import sky_colour
 from roadhem_training.scenes.materials import linear
-from roadhem_training.scenes.noise import GRAIN_M, PEBBLE_M, SPOT_M, Noise
+from roadhem_training.scenes.noise import GRAIN_M, LEAF_M, PEBBLE_M, Noise
 from roadhem_training.scenes.world import Crown
 
 LEAVES = {
-    "summer": ((58, 82, 40), (72, 94, 46), (86, 104, 52), (50, 72, 42), (96, 106, 62)),
-    "autumn": ((168, 110, 58), (186, 142, 70), (112, 104, 56), (150, 84, 56), (84, 96, 50)),
-    "winter": ((122, 110, 98), (106, 96, 86), (134, 122, 108)),
+    "summer": ((62, 80, 46), (74, 92, 52), (90, 104, 60), (54, 70, 44), (104, 110, 70), (46, 62, 42)),
+    "autumn": ((150, 108, 66), (166, 132, 76), (112, 106, 62), (136, 86, 62), (88, 96, 56), (120, 96, 70)),
 }
-NEEDLES = ((40, 60, 42), (48, 66, 44), (36, 54, 44))
-BARE = 0.35
-"""Density that deciduous crowns keep in winter."""
+NEEDLES = ((44, 60, 46), (52, 66, 48), (38, 54, 44))
+BARK = (128, 118, 108)
 
+STEEPNESS = {"conifer": 1.8, "bush": 0.6, "columnar": 1.2}
+"""How much the flanks of a crown darken and brighten; 1 where not named."""
 
-def in_season(crown: Crown, flight: Flight) -> Crown:
-    """Return the crown as it is in the season of the flight."""
-    bare = flight.season == "winter" and crown.species in ("round", "columnar")
-    return replace(crown, density=crown.density * BARE) if bare else crown
+LEAN_SHARE = 0.75
+"""The part of its height at which a crown is widest."""
 
 
 def draw_crowns(
@@ -41,56 +38,68 @@ def draw_crowns(
     rng: np.random.Generator,
 ) -> None:
     """Draw crowns, lower ones first, into `image` (rows, cols, 3) light; `hidden` becomes True under them."""
-    clumps = noise.at(SPOT_M, 6) * np.float32(0.16) + noise.at(PEBBLE_M, 6) * np.float32(0.11)
-    grain = noise.at(GRAIN_M)
+    clumps = noise.at(LEAF_M) * np.float32(0.75) + noise.at(PEBBLE_M) * np.float32(0.55)
     sky = sky_colour(flight)
-    half = frame.rows * frame.pixel / 2
+    draw_bare(image, [crown for crown in crowns if is_bare(crown)], frame, flight, sky)
     for crown in sorted(crowns, key=lambda t: t.height):
-        evergreen = crown.species == "conifer" or (crown.species == "bush" and flight.season == "winter")
-        colours = NEEDLES if evergreen else LEAVES[flight.season]
+        if is_bare(crown):
+            continue
+        colours = NEEDLES if crown.species == "conifer" else LEAVES[flight.season]
         chosen = np.asarray(colours[int(crown.tint * len(colours)) % len(colours)], np.float32)
-        colour = linear(np.clip(chosen * rng.uniform(0.85, 1.2) * (1 + rng.normal(0, 0.03, 3)), 8, 250))
-        lean = [(flight.lean[0] + flight.lean_spread * (crown.x - half)) * crown.height * 0.7 * (flight.lean_spread > 0)]
-        lean.append((flight.lean[1] + flight.lean_spread * (crown.y - half)) * crown.height * 0.7 * (flight.lean_spread > 0))
-        x, y, reach = crown.x + lean[0], crown.y + lean[1], 1.2 * crown.radius
+        colour = linear(np.clip(chosen * rng.uniform(0.8, 1.2) * (1 + rng.normal(0, 0.03, 3)), 8, 250))
+        lean = np.array(flight.lean_at(crown.x, crown.y, frame)) * LEAN_SHARE * crown.height
+        x, y, reach = crown.x + lean[0], crown.y + lean[1], 1.3 * crown.radius
         window = frame.window([x - reach, y - reach, x + reach, y + reach])
         if window is None:
             continue
         bounds = np.array([window[0].start, window[0].stop, window[1].start, window[1].stop])
-        numbers = np.array([
-            (x - frame.left) / frame.pixel, (frame.top - y) / frame.pixel, crown.radius / frame.pixel,
-            crown.density, flight.to_sun[0], -flight.to_sun[1], flight.shadow_per_metre,
-            2.2 if crown.species == "conifer" else 1.0 if crown.species != "bush" else 0.7,
-        ])
-        _crown(image, hidden, clumps, grain, bounds, numbers, colour, sky)
+        col, row = frame.to_pixels([x, y])
+        steep = STEEPNESS.get(crown.species, 1.0)
+        sun = flight.to_sun[0], -flight.to_sun[1], flight.shadow_per_metre
+        numbers = np.array([col, row, crown.radius / frame.pixel, crown.density, *sun, steep, frame.pixel])
+        _crown(image, hidden, clumps, noise.at(GRAIN_M), bounds, numbers, colour, sky)
+
+
+def draw_bare(
+    image: NDArray[np.float32], crowns: list[Crown], frame: Frame, flight: Flight, sky: NDArray[np.float32]
+) -> None:
+    """Draw the branches of bare trees; they hide nothing."""
+    if not crowns:
+        return
+    mask = np.zeros((frame.rows, frame.cols), np.uint8)
+    for crown in crowns:
+        draw_segments(mask, drop(skeleton(crown), flight.lean_at(crown.x, crown.y, frame)), frame, 170)
+    alpha = mask[..., None].astype(np.float32) / 255
+    image += alpha * (linear(BARK) * (sky + (1 - sky) * np.float32(0.8)) - image)
 
 
 @numba.njit(cache=True)
 def _crown(image, hidden, clumps, grain, bounds, numbers, colour, sky):  # type: ignore[no-untyped-def]
-    x0, y0, radius, density, sun_x, sun_y, per_metre, steep = numbers
+    x0, y0, radius, density, sun_x, sun_y, per_metre, steep, pixel = numbers
     rows, cols = image.shape[0], image.shape[1]
-    step = 2
+    ahead = 0.3 / pixel
+    low = min(per_metre, 2.0)
     for r in range(bounds[0], bounds[1]):
         y = (r + 0.5 - y0) / radius
         for c in range(bounds[2], bounds[3]):
             x = (c + 0.5 - x0) / radius
             square = x * x + y * y
-            if square > 1.4:
+            if square > 1.7:
                 continue
             clump = clumps[r, c]
-            edge = 1 - np.sqrt(square) + 0.9 * clump
-            alpha = min(max(edge * radius * 0.22, 0.0), 1.0)
-            alpha *= min(max(1.6 * density - 0.4 + (1 - density) * 7 * clump + (1 - density) * 0.5 * grain[r, c], 0.0), 1.0)
+            alpha = min(max((1 - np.sqrt(square)) * radius * pixel * 2.5 + 0.5 + 0.8 * clump, 0.0), 1.0)
+            alpha *= min(max(0.5 + 2.6 * (density - 0.55) + (1 - density) * (1.6 * clump + 0.7 * grain[r, c]), 0.0), 1.0)
             if alpha <= 0:
                 continue
-            rr = min(max(int(r + step * sun_y), 0), rows - 1)
-            cc = min(max(int(c + step * sun_x), 0), cols - 1)
-            bump = (clump - clumps[rr, cc]) * 2.2
-            dome = (x * sun_x + y * sun_y) * 0.55 * steep
-            lit = min(max(0.75 + dome + bump + 1.2 * clump, 0.0), 1.6)
-            tone = 1 + 0.12 * grain[r, c]
+            rr = min(max(int(r + ahead * sun_y + 0.5), 0), rows - 1)
+            cc = min(max(int(c + ahead * sun_x + 0.5), 0), cols - 1)
+            bump = 0.42 * (clump - clumps[rr, cc])
+            dome = (x * sun_x + y * sun_y) * 0.38 * steep
+            lit = min(max(0.62 + (dome + bump) * low, 0.0), 1.5)
+            cavity = min(max(0.72 + 0.30 * clump, 0.25), 1.2)
+            tone = 1 + 0.10 * grain[r, c]
             for k in range(3):
-                light = sky[k] * (0.75 + 1.2 * clump) + (1 - sky[k]) * lit
-                image[r, c, k] += alpha * (colour[k] * max(light, 0.03) * tone - image[r, c, k])
+                light = sky[k] * cavity + (1 - sky[k]) * lit * min(cavity + 0.2, 1.1)
+                image[r, c, k] += alpha * (colour[k] * max(light * tone, 0.02) - image[r, c, k])
             if alpha > 0.5:
                 hidden[r, c] = True

@@ -6,6 +6,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from roadhem_training.scenes.coverage import Frame
+
 CHANCES = {
     "overcast": 0.22,
     "lean": 0.55,
@@ -32,7 +34,6 @@ CHANCES = {
     "gravelly": 0.08,
     "snowy": 0.03,
     "damp": 0.10,
-    "winter": 0.18,
     "autumn": 0.15,
     "height_with_cars": 0.4,
     "height_with_crowns": 0.4,
@@ -49,7 +50,7 @@ class Flight:
     ----------
     sun_azimuth : direction to the sun, radians counter-clockwise from east; sun_elevation : radians.
     sun : share of the direct light, 0 overcast .. 1; sky : colour of shadow light relative to full sun, (3,).
-    season : "summer", "autumn" or "winter".
+    season : "summer" or "autumn"; bare trees are told by their density.
     lean : metres of displacement per metre of height, (east, north) at the frame's middle; lean_spread : its change
         per metre away from the middle.
     events : names out of CHANCES that happen.
@@ -74,6 +75,11 @@ class Flight:
         """Length of the shadow of a metre's height."""
         return float(1 / np.tan(self.sun_elevation))
 
+    def lean_at(self, x: float, y: float, frame: Frame) -> tuple[float, float]:
+        """Displacement (east, north) in the picture per metre of height at a place."""
+        half = frame.rows * frame.pixel / 2
+        return self.lean[0] + self.lean_spread * (x - half), self.lean[1] + self.lean_spread * (y - half)
+
     def has(self, event: str) -> bool:
         """Tell whether something out of CHANCES happens."""
         return event in self.events
@@ -85,7 +91,7 @@ def draw_flight(rng: np.random.Generator) -> Flight:
     shade = rng.uniform(0.16, 0.40)
     blue = rng.uniform(0.0, 0.25)
     lean = rng.normal(0, 0.12, 2) if "lean" in events else np.zeros(2)
-    season = "winter" if "winter" in events else "autumn" if "autumn" in events else "summer"
+    season = "autumn" if "autumn" in events else "summer"
     return Flight(
         sun_azimuth=float(rng.uniform(-np.pi, 0) if rng.random() < 0.8 else rng.uniform(0, np.pi)),
         sun_elevation=float(np.radians(rng.uniform(24, 64))),

@@ -7,17 +7,26 @@ import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from roadhem_training.scenes.branches import draw_segments, drop, is_bare, skeleton
 from roadhem_training.scenes.coverage import Frame, Patch, cover_area, cover_rings, polygon_rings
 from roadhem_training.scenes.distance import SignedDistance
 from roadhem_training.scenes.flight import Flight
-from roadhem_training.scenes.noise import PEBBLE_M, SPOT_M, Noise
+from roadhem_training.scenes.noise import LEAF_M, PEBBLE_M, Noise
 from roadhem_training.scenes.world import Body, Crown, World
 
 PENUMBRA = 0.0093
 """Width of the half shadow per metre of ray: the sun's angular diameter, 0.53 degrees (common knowledge)."""
 
+BRANCH_PENUMBRA_PX = 0.6
+
 STANDING = ("house", "hall", "wall", "shelter")
-"""Bodies large enough to shade others and to dim the sky beside them."""
+"""Bodies large enough to dim the sky beside them."""
+
+THIN = ("pole", "post", "fence", "rail")
+"""Bodies too thin to dim anything."""
+
+TALL_M = 5.0
+"""Bodies higher than this dim the sky some metres away."""
 
 
 def sweep_body(body: Body, first: tuple[float, float], last: tuple[float, float], frame: Frame) -> Patch | None:
@@ -62,8 +71,13 @@ def cast_crowns(
     """Add the shadows of crowns to `dark`: an ellipse with flecks of light, and the trunk."""
     length = flight.shadow_per_metre
     sx, sy = flight.to_sun
-    leaves = noise.at(PEBBLE_M, 4) * np.float32(0.5) + noise.at(SPOT_M, 4) * np.float32(0.7)
+    leaves = noise.at(PEBBLE_M) * np.float32(0.6) + noise.at(LEAF_M, 2) * np.float32(0.7)
+    bare = [crown for crown in crowns if is_bare(crown)]
+    if bare:
+        _cast_bare(dark, bare, frame, (-sx * length, -sy * length))
     for crown in crowns:
+        if is_bare(crown):
+            continue
         middle, half = (0.66, 0.34) if crown.species != "bush" else (0.5, 0.5)
         x = crown.x - sx * length * crown.height * middle
         y = crown.y - sy * length * crown.height * middle
@@ -76,18 +90,34 @@ def cast_crowns(
             _shade_ellipse(dark, leaves, _bounds(window), place, size, np.array([sx, -sy]), crown.density)
 
 
+def _cast_bare(
+    dark: NDArray[np.float32], crowns: list[Crown], frame: Frame, per_metre: tuple[float, float]
+) -> None:
+    mask = np.zeros((frame.rows, frame.cols), np.uint8)
+    for crown in crowns:
+        draw_segments(mask, drop(skeleton(crown), per_metre), frame, 190)
+    soft = cv2.GaussianBlur(mask, (0, 0), BRANCH_PENUMBRA_PX)
+    np.maximum(dark, soft * np.float32(0.8 / 255), out=dark)
+
+
 def dim_sky(bodies: list[Body], frame: Frame) -> NDArray[np.float32]:
-    """Share of sky light that reaches the ground beside buildings: (rows, cols) float32."""
-    small = Frame(frame.rows // 8 + 1, frame.cols // 8 + 1, frame.pixel * 8, frame.left, frame.top)
-    near, far = np.zeros((2, small.rows, small.cols), np.float32)
+    """Share of sky light that reaches the ground beside buildings and under cars: (rows, cols) float32."""
+    tall = [body for body in bodies if body.what in STANDING and body.top > TALL_M]
+    low = [body for body in bodies if body.what not in THIN and body.top <= TALL_M]
+    lost = 0.5 * _blurred(tall, frame, 8, 2.5) + 0.55 * _blurred(low + tall, frame, 2, 0.3)
+    return np.clip(1 - lost, 0.25, 1)
+
+
+def _blurred(bodies: list[Body], frame: Frame, step: int, reach: float) -> NDArray[np.float32]:
+    """Footprints on cells of `step` pixels, blurred by `reach` metres, brought back to pixels."""
+    coarse = Frame(frame.rows // step + 1, frame.cols // step + 1, frame.pixel * step, frame.left, frame.top)
+    taken = np.zeros((coarse.rows, coarse.cols), np.float32)
     for body in bodies:
-        patch = cover_area(body.footprint, small) if body.what in STANDING and body.base == 0 else None
+        patch = cover_area(body.footprint, coarse)
         if patch is not None:
-            target = far if body.top > 5 else near
-            np.maximum(target[patch.window], patch.cover, out=target[patch.window])
-    blurred = 0.35 * cv2.GaussianBlur(near, (0, 0), 0.6 / small.pixel)
-    blurred += 0.5 * cv2.GaussianBlur(far, (0, 0), 2.5 / small.pixel)
-    wide = cv2.resize(1 - blurred, None, fx=8, fy=8, interpolation=cv2.INTER_LINEAR)
+            np.maximum(taken[patch.window], patch.cover, out=taken[patch.window])
+    soft = cv2.GaussianBlur(taken, (0, 0), reach / coarse.pixel)
+    wide = cv2.resize(soft, None, fx=step, fy=step, interpolation=cv2.INTER_LINEAR)
     return np.ascontiguousarray(wide[: frame.rows, : frame.cols])
 
 
@@ -152,8 +182,8 @@ def _shade_ellipse(dark, leaves, bounds, place, size, axis, density):  # type: i
             if radius > 1.25:
                 continue
             leaf = leaves[r, c]
-            alpha = min(max((1 - radius + 0.13 * leaf) * 5, 0.0), 1.0)
-            alpha *= min(max(density * 1.15 + 0.45 * (1 - density * density) * leaf, 0.0), 1.0)
+            alpha = min(max((1 - radius + 0.10 * leaf) * 5, 0.0), 1.0)
+            alpha *= min(max(0.6 + 2.2 * (density - 0.55) + 0.9 * (1 - density) * leaf, 0.0), 0.97)
             dark[r, c] = max(dark[r, c], np.float32(alpha))
 
 

@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 from roadhem_training.scenes.coverage import Frame
 
-GRAIN_M, PEBBLE_M, SPOT_M, PATCH_M, DRIFT_M, FIELD_M = 0.0, 0.35, 1.2, 4.0, 14.0, 45.0
+GRAIN_M, PEBBLE_M, LEAF_M, SPOT_M, PATCH_M, DRIFT_M, FIELD_M = 0.0, 0.35, 0.7, 1.2, 4.0, 14.0, 45.0
 """Grain sizes in use: 0 is independent from pixel to pixel."""
 
 DRAWN, FLIPS = 2, (0, 1, -1)

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from roadhem_training.scenes.bodies import VEHICLES, draw_bodies
 from roadhem_training.scenes.camera import take_picture
 from roadhem_training.scenes.coverage import Frame
-from roadhem_training.scenes.crowns import draw_crowns, in_season
+from roadhem_training.scenes.crowns import draw_crowns
 from roadhem_training.scenes.distance import SignedDistance, signed_distance
 from roadhem_training.scenes.flight import Flight, draw_flight
 from roadhem_training.scenes.ground import lay_ground
@@ -84,10 +84,9 @@ def view(world: World, flight: Flight, seed: int, pixel: float = PIXEL_M) -> Vie
     noise = Noise(seed, frame)
     distance = signed_distance(world, pixel)
     image, relief = _surface(world, distance, frame, flight, noise, np.random.default_rng([seed, 3]))
-    crowns = [in_season(crown, flight) for crown in world.crowns]
     cars = [body for body in world.bodies if body.what in VEHICLES]
     dark = cast_bodies([body for body in world.bodies if body.what not in VEHICLES], frame, flight)
-    cast_crowns(dark, crowns, frame, flight, noise)
+    cast_crowns(dark, world.crowns, frame, flight, noise)
     above = dark.copy()
     np.maximum(dark, cast_bodies(cars, frame, flight), out=dark)
     shadow = (dark > SHADED) & (flight.sun > SHADED)
@@ -97,7 +96,7 @@ def view(world: World, flight: Flight, seed: int, pixel: float = PIXEL_M) -> Vie
     hidden = np.zeros(dark.shape, bool)
     rng = np.random.default_rng([seed, 5])
     draw_bodies(image, hidden, world.bodies, above, frame, flight, noise, rng)
-    draw_crowns(image, hidden, crowns, frame, flight, noise, rng)
+    draw_crowns(image, hidden, world.crowns, frame, flight, noise, rng)
     return View(image, ground_height(world, relief, distance, frame, noise), shadow, hidden)
 
 
