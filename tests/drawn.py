@@ -9,6 +9,7 @@ from __future__ import annotations
 import hashlib
 import json
 from collections.abc import Sequence
+from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
@@ -57,7 +58,7 @@ def drawn_pixels(
     x = east + (np.arange(size) + 0.5) * pixel
     y = north - (np.arange(size) + 0.5) * pixel
     places = np.stack(np.meshgrid(x, y), axis=-1).reshape(-1, 2)
-    pieces = [piece for line in lines for piece in zip(line[:-1], line[1:], strict=True)]
+    pieces = [piece for line in lines for piece in pairwise(line)]
     best = np.full(len(places), np.inf)
     signed, axis = np.zeros(len(places)), np.tile([1.0, 0.0], (len(places), 1))
     for a, b in np.asarray(pieces, dtype=np.float64):
