@@ -34,6 +34,7 @@ CHANCES = {
     "gravelly": 0.08,
     "snowy": 0.03,
     "damp": 0.10,
+    "wires": 0.12,
     "autumn": 0.15,
     "height_with_cars": 0.4,
     "height_with_crowns": 0.4,

@@ -48,15 +48,12 @@ def sweep_body(body: Body, first: tuple[float, float], last: tuple[float, float]
     return Patch(window, cover_rings(rings, offsets, every, window, frame))
 
 
-def cast_bodies(bodies: list[Body], frame: Frame, flight: Flight, floor: float = 0.0) -> NDArray[np.float32]:
-    """Share of direct light that bodies take away at height `floor`: (rows, cols) float32."""
+def cast_bodies(bodies: list[Body], frame: Frame, flight: Flight) -> NDArray[np.float32]:
+    """Share of direct light that bodies take from the ground: (rows, cols) float32."""
     dark = np.zeros((frame.rows, frame.cols), np.float32)
-    per_metre = -flight.shadow_per_metre * np.array(flight.to_sun)
+    away = np.array(away_from_sun(flight))
     for body in bodies:
-        if body.top <= floor:
-            continue
-        first, last = per_metre * max(body.base - floor, 0.0), per_metre * (body.top - floor)
-        patch = sweep_body(body, tuple(first), tuple(last), frame)
+        patch = sweep_body(body, tuple(away * body.base), tuple(away * body.top), frame)
         if patch is None:
             continue
         blur = 0.3 * PENUMBRA * body.top / np.sin(flight.sun_elevation) / frame.pixel
@@ -74,7 +71,7 @@ def cast_crowns(
     leaves = noise.at(PEBBLE_M) * np.float32(0.6) + noise.at(LEAF_M, 2) * np.float32(0.7)
     bare = [crown for crown in crowns if is_bare(crown)]
     if bare:
-        _cast_bare(dark, bare, frame, (-sx * length, -sy * length))
+        _cast_bare(dark, bare, frame, away_from_sun(flight))
     for crown in crowns:
         if is_bare(crown):
             continue
@@ -149,6 +146,19 @@ def light_up(
 ) -> None:
     """Turn reflectance into light in place: sky light everywhere, the sun's where nothing takes it away."""
     _light_up(image, dark, sky, sky_colour(flight))
+
+
+def away_from_sun(flight: Flight) -> tuple[float, float]:
+    """Displacement (east, north) of a shadow per metre of height."""
+    return -flight.shadow_per_metre * flight.to_sun[0], -flight.shadow_per_metre * flight.to_sun[1]
+
+
+def facet_light(tilt: float, towards: float, flight: Flight) -> NDArray[np.float32]:
+    """Light on a facet that rises `tilt` per metre and faces `towards` (radians), flat ground being 1: (3,)."""
+    facing = np.cos(towards - flight.sun_azimuth)
+    direct = max((1 + tilt * facing * flight.shadow_per_metre) / np.hypot(1.0, tilt), 0.0)
+    sky = sky_colour(flight)
+    return (sky * np.float32(0.9) + (1 - sky) * np.float32(min(direct, 1.5))).astype(np.float32)
 
 
 def sky_colour(flight: Flight) -> NDArray[np.float32]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -164,3 +165,9 @@ def pick_colour(material: Material, rng: np.random.Generator, tone: float) -> ND
     warm, bright = rng.normal(0, 0.012), rng.normal(0, 0.03)
     mixed = mixed * (1 + bright + warm * np.array([1.0, 0.1, -1.0])) * (1 + 0.28 * tone)
     return linear(np.clip(mixed, 8, 250))
+
+
+def pick_from(colours: Sequence[Colour], tint: float, rng: np.random.Generator) -> NDArray[np.float32]:
+    """Return the reflectance (3,) of the colour that `tint` 0..1 points at, slightly varied."""
+    chosen = np.asarray(colours[min(int(tint * len(colours)), len(colours) - 1)], np.float32)
+    return linear(np.clip(chosen * rng.uniform(0.88, 1.1) * (1 + rng.normal(0, 0.02, 3)), 8, 250))

@@ -16,12 +16,13 @@ from roadhem_training.scenes.distance import SignedDistance, signed_distance
 from roadhem_training.scenes.flight import Flight, draw_flight
 from roadhem_training.scenes.ground import lay_ground
 from roadhem_training.scenes.heights import ground_height, sense_height
-from roadhem_training.scenes.light import cast_bodies, cast_crowns, dim_sky, light_up, shade_curbs
+from roadhem_training.scenes.light import away_from_sun, cast_bodies, cast_crowns, dim_sky, light_up, shade_curbs
 from roadhem_training.scenes.litter import litter_edges
 from roadhem_training.scenes.markings import paint_markings
 from roadhem_training.scenes.noise import Noise
 from roadhem_training.scenes.scene import Scene
 from roadhem_training.scenes.wear import wear_paint, wear_surface
+from roadhem_training.scenes.wires import mask_wires, string_wires
 from roadhem_training.scenes.world import World
 
 SHADED = 0.5
@@ -87,6 +88,9 @@ def view(world: World, flight: Flight, seed: int, pixel: float = PIXEL_M) -> Vie
     cars = [body for body in world.bodies if body.what in VEHICLES]
     dark = cast_bodies([body for body in world.bodies if body.what not in VEHICLES], frame, flight)
     cast_crowns(dark, world.crowns, frame, flight, noise)
+    wires = string_wires(world.size, np.random.default_rng([seed, 6])) if flight.has("wires") else None
+    if wires is not None:
+        np.maximum(dark, mask_wires(wires, away_from_sun(flight), frame), out=dark)
     above = dark.copy()
     np.maximum(dark, cast_bodies(cars, frame, flight), out=dark)
     shadow = (dark > SHADED) & (flight.sun > SHADED)
@@ -97,6 +101,8 @@ def view(world: World, flight: Flight, seed: int, pixel: float = PIXEL_M) -> Vie
     rng = np.random.default_rng([seed, 5])
     draw_bodies(image, hidden, world.bodies, above, frame, flight, noise, rng)
     draw_crowns(image, hidden, world.crowns, frame, flight, noise, rng)
+    if wires is not None:
+        image *= 1 - mask_wires(wires, flight.lean_at(world.size / 2, world.size / 2, frame), frame)[..., None]
     return View(image, ground_height(world, relief, distance, frame, noise), shadow, hidden)
 
 
