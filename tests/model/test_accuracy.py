@@ -27,8 +27,8 @@ def write(path: Path, layer: str, shapes: list, crs: str = "EPSG:25832", **colum
     """Append a layer to a GeoPackage."""
     kinds = {shape.geom_type for shape in shapes}
     pyogrio.raw.write(
-        str(path), shapely.to_wkb(np.array(shapes, dtype=object)), [np.array(v, dtype=object) for v in columns.values()],
-        list(columns), layer=layer, driver="GPKG", crs=crs, append=path.exists(),
+        str(path), shapely.to_wkb(np.array(shapes, dtype=object)),
+        [np.array(values, dtype=object) for values in columns.values()], list(columns), layer=layer, driver="GPKG", crs=crs, append=path.exists(),
         geometry_type=kinds.pop() if len(kinds) == 1 else "Unknown",
     )  # fmt: skip
     return path
@@ -94,11 +94,12 @@ def test_interval_arithmetic(a: list, b: list) -> None:
     left, common = subtract(one, two), intersect(one, two)
     assert left.length + common.length == pytest.approx(one.length, abs=1e-9)
     ruler = np.arange(0.0039, 9, 0.0117)
+    rest = list(zip(left.segment, left.low, left.high, strict=True))
     for segment in range(4):
         inside = {
             name: np.any([(s == segment) & (lo < ruler) & (ruler < hi) for s, lo, hi in spans_], axis=0)
             if spans_ else np.zeros(len(ruler), bool)
-            for name, spans_ in (("a", a), ("b", b), ("left", list(zip(left.segment, left.low, left.high, strict=True))))
+            for name, spans_ in (("a", a), ("b", b), ("left", rest))
         }  # fmt: skip
         np.testing.assert_array_equal(inside["left"], inside["a"] & ~inside["b"])
 

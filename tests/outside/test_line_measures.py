@@ -1,7 +1,7 @@
 """Line measures against worked examples, and shape distances against their closed forms.
 
-Definitions: Heipke, Mayer, Wiedemann, Jamet 1997 and Wiedemann 2003 (abstracts read; formulas from memory). The numbers
-of W1 to W4 and of the shape distances are [built] from the definitions: anyone can recompute them.
+Definitions: Heipke, Mayer, Wiedemann, Jamet 1997 and Wiedemann 2003 (abstracts read; formulas from memory). The
+numbers of W1 to W4 and of the shape distances are [built] from the definitions: anyone can recompute them.
 """
 
 from __future__ import annotations
@@ -76,7 +76,7 @@ def test_round_caps_not_flat_ones() -> None:
 
 
 def test_matched_lengths_agree_with_buffer_polygons() -> None:
-    """Should agree with shapely's round buffers, whose 256 sides a quarter are short of a circle by 2e-6 of its radius."""
+    """Should agree with shapely's round buffers, 2e-5 short of a circle at 256 sides a quarter."""
     rng = np.random.default_rng(3)
     lines = [LineString(rng.uniform(0, 40, (6, 2))) for _ in range(25)]
     reference = [LineString(rng.uniform(0, 40, (6, 2))) for _ in range(25)]
@@ -122,7 +122,7 @@ def test_directed_hausdorff_of_a_gable() -> None:
 
 
 def test_pooling_over_tiles_beats_averaging() -> None:
-    """Should pool lengths: quality of two tiles is not the closed form of their mean figures (Wiedemann 2003, [built])."""
+    """Should pool lengths: quality is no closed form of mean figures (Wiedemann 2003, [built])."""
     far = [LineString([(0, 1000), (300, 1000)])]
     found = measured([*STRAIGHT, *far], [*PARTLY, LineString([(0, 1000.5), (300, 1000.5)])], 1.0)
     assert found.quality == pytest.approx((80 + 300) / (400 + 19.0835), abs=1e-6)

@@ -10,6 +10,7 @@ from __future__ import annotations
 import difflib
 import os
 import sys
+import warnings
 from collections.abc import Sequence
 from importlib import import_module
 from importlib.metadata import entry_points
@@ -85,6 +86,7 @@ def roadhem(ctx: click.Context) -> None:
 
 def main(arguments: Sequence[str] | None = None) -> NoReturn:
     """Run the command line and end the process."""
+    warnings.simplefilter("ignore")  # libraries' hints to programmers; what users must know is told in sentences
     try:
         status = roadhem.main(arguments, prog_name="roadhem", standalone_mode=False)
     except BaseException as error:

@@ -49,18 +49,20 @@ def trace(
     Example:
       roadhem trace flight/*.tif --seeds marks.gpkg --out lines.gpkg --picture lines.png
     """
-    from roadhem.delivery.picture import check_picture, draw_traced
     from roadhem.jobs.session import open_session
     from roadhem.jobs.trace import TraceJob, trace_tiles
+    from roadhem.lines.files import check_target
 
     if picture is not None:
-        check_picture(picture)
+        check_target(picture, (".png",))
     job = TraceJob(inputs_of(**tiles_and_model), seeds, out, workers, resume, allow_ballpark)
     with progress_bar("seeds") as progress:
         summary = trace_tiles(job, open_session, progress)
     if picture is not None:
+        from roadhem.delivery.picture import draw_traced
+
         session = summary.session
-        draw_traced(picture, session, session.bounds_m, session.grid, summary.layers, out.stem)
+        draw_traced(picture, session, session.bounds_m, session.grid, summary.layers, f"Traced edges, {out.name}")
     if as_json:
         print_json(summary.figures())
     else:

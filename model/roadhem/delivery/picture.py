@@ -29,7 +29,7 @@ from roadhem.delivery.palette import (
     step_names,
     step_of,
 )
-from roadhem.lines.files import check_target, whole_file
+from roadhem.lines.files import whole_file
 from roadhem.lines.records import TracedLayers
 from roadhem.lines.tables import Table
 from roadhem.tiles.grid import WorkingGrid
@@ -58,11 +58,6 @@ class _Map:
     pixel_m: float
     layers: TracedLayers
     grid: WorkingGrid
-
-
-def check_picture(path: Path) -> None:
-    """Refuse a picture that could not be written; raises BadInput."""
-    check_target(path, (".png",))
 
 
 def draw_traced(

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import warnings
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -140,9 +141,11 @@ def best_transformer(
     ------
     BadInput : as `to_crs`; the sentence names the operation or the missing grid.
     """
-    group = TransformerGroup(
-        source, target, always_xy=True, allow_ballpark=True, area_of_interest=_area(source, bounds)
-    )
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore")  # a missing grid is told below
+        group = TransformerGroup(
+            source, target, always_xy=True, allow_ballpark=True, area_of_interest=_area(source, bounds)
+        )
     pair = f"{what} from {source.name} to {target.name}"
     way_out = "bring it to the tiles' CRS yourself, or accept the shift with --allow-ballpark"
     if not group.transformers:
