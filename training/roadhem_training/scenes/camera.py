@@ -7,6 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roadhem_training.scenes.flight import Flight
+from roadhem_training.scenes.heights import scatter
 
 GAMMA_STEPS, BRIGHTEST = 4096, 1.5
 """Entries of the tone table and the light of its last one."""
@@ -40,6 +41,8 @@ def take_picture(
     -------
     image (rows, cols, 3) uint8, valid (rows, cols) bool.
     """
+    if flight.has("intensity"):
+        light = returns(light, pixel, rng)
     light = cv2.GaussianBlur(light, (0, 0), rng.uniform(0.35, 0.75))
     if flight.has("coarser"):
         light = resample(light, pixel, rng)
@@ -62,10 +65,21 @@ def resample(light: NDArray[np.float32], pixel: float, rng: np.random.Generator)
     return cv2.resize(small, (cols, rows), interpolation=back)
 
 
+def returns(light: NDArray[np.float32], pixel: float, rng: np.random.Generator) -> NDArray[np.float32]:
+    """Strength of LiDAR returns: near infrared, where plants are bright, speckled, in cells of its own."""
+    plants = np.clip(light[..., 1] - 0.5 * (light[..., 0] + light[..., 2]), 0, None)
+    strength = light.mean(axis=2) + np.float32(rng.uniform(2, 6)) * plants
+    cells = max(round(light.shape[0] * pixel / rng.uniform(0.2, 0.5)), 8)
+    coarse = cv2.resize(strength, (cells, cells), interpolation=cv2.INTER_AREA)
+    coarse = scatter(coarse, rng) * np.exp(rng.normal(0, rng.uniform(0.08, 0.3), coarse.shape)).astype(np.float32)
+    way = cv2.INTER_LINEAR if rng.random() < 0.5 else cv2.INTER_NEAREST
+    return cv2.merge([cv2.resize(coarse, light.shape[1::-1], interpolation=way)] * 3)
+
+
 def tone_curve(light: NDArray[np.float32], flight: Flight, rng: np.random.Generator) -> NDArray[np.float32]:
     """Exposure, white balance, haze, gamma, contrast and saturation: light to 0..255 float32."""
     bright = float(np.percentile(light[::8, ::8, 1], BRIGHT_PERCENT))
-    exposure = float(np.clip(rng.uniform(0.45, 0.95) / max(bright, 1e-3), 0.7, 3.5))
+    exposure = float(np.clip(rng.uniform(0.4, 0.85) / max(bright, 1e-3), 0.7, 3.5))
     warm, green = rng.normal(0, 0.035), rng.normal(0, 0.015)
     balance = np.exp([warm, green, -warm])
     haze = rng.uniform(0.03, 0.22) if flight.has("haze") else rng.uniform(0, 0.03)
@@ -116,7 +130,7 @@ def deliver(picture: NDArray[np.uint8], flight: Flight, rng: np.random.Generator
         picture = seam(picture, rng)
     if flight.has("smear"):
         picture = smear(picture, rng)
-    if flight.has("grey"):
+    if flight.has("grey") or flight.has("intensity"):
         picture = np.repeat(cv2.cvtColor(picture, cv2.COLOR_RGB2GRAY)[..., None], 3, axis=2)
     if flight.has("jpeg"):
         quality = int(rng.integers(45, 96))

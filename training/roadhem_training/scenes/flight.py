@@ -38,9 +38,15 @@ CHANCES = {
     "autumn": 0.15,
     "height_with_cars": 0.4,
     "height_with_crowns": 0.4,
-    "height_with_houses": 0.6,
+    "height_with_houses": 0.5,
+    "height_holes": 0.4,
+    "height_scattered": 0.3,
 }
-"""How often each thing happens, 0..1."""
+"""How often each thing happens, 0..1.
+
+intensity: the strength of LiDAR returns instead of a photograph. height_with_...: what the ground filter leaves in;
+height_holes: what it takes out leaves holes rather than filled ground; height_scattered: cells take the nearest return.
+"""
 
 
 @dataclass(frozen=True)
@@ -96,7 +102,7 @@ def draw_flight(rng: np.random.Generator) -> Flight:
     return Flight(
         sun_azimuth=float(rng.uniform(-np.pi, 0) if rng.random() < 0.8 else rng.uniform(0, np.pi)),
         sun_elevation=float(np.radians(rng.uniform(24, 64))),
-        sun=float(rng.uniform(0, 0.12) if "overcast" in events else rng.uniform(0.75, 1.0)),
+        sun=float(rng.uniform(0, 0.12) if events & {"overcast", "intensity"} else rng.uniform(0.75, 1.0)),
         sky=(shade * (1 - 0.5 * blue), shade, shade * (1 + blue)),
         season=season,
         lean=(float(lean[0]), float(lean[1])),

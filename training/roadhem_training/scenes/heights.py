@@ -7,6 +7,8 @@ import numba
 import numpy as np
 from numpy.typing import NDArray
 
+from roadhem_training.scenes.bodies import BUILT
+from roadhem_training.scenes.branches import is_bare
 from roadhem_training.scenes.coverage import Frame, cover_area
 from roadhem_training.scenes.distance import SignedDistance
 from roadhem_training.scenes.flight import Flight
@@ -15,6 +17,10 @@ from roadhem_training.scenes.world import World
 
 STEP_REACH_M = 1.0
 """From the height at the curb the ground goes over to the relief of its cover within this distance."""
+
+CELLS_M = (0.25, 0.25, 0.5, 0.5, 1.0)
+NOISE_M = (0.01, 0.04)
+"""Cells of height rasters, and their noise at 0.5 m cells."""
 
 
 def ground_height(
@@ -37,14 +43,25 @@ def sense_height(
     world: World, ground: NDArray[np.float32], frame: Frame, flight: Flight, rng: np.random.Generator
 ) -> NDArray[np.float32]:
     """Return what a height sensor gives: (rows, cols) float32 metres, NaN in holes, bilinear from its own cells."""
-    cell = float(rng.choice([0.25, 0.25, 0.5, 0.5, 1.0]))
-    count = max(round(frame.rows * frame.pixel / cell), 2)
-    coarse = Frame(count, count, frame.rows * frame.pixel / count, frame.left, frame.top)
-    height = cv2.resize(ground, (count, count), interpolation=cv2.INTER_AREA)
-    _stand_up(height, world, coarse, flight)
-    height += rng.normal(0, rng.uniform(0.01, 0.04) * (0.5 / cell) ** 0.5, height.shape).astype(np.float32)
+    cell = float(rng.choice(CELLS_M))
+    coarse = coarse_frame(frame, cell)
+    height = cv2.resize(ground, (coarse.cols, coarse.rows), interpolation=cv2.INTER_AREA)
+    above = standing_height(world, coarse)
+    left_in = np.zeros_like(height)
+    removed = np.zeros(height.shape, bool)
+    for what, lifted in above.items():
+        if flight.has(f"height_with_{what}"):
+            np.maximum(left_in, lifted, out=left_in)
+        else:
+            removed |= lifted > 0
+    height += left_in
+    if flight.has("height_scattered"):
+        height = scatter(height, rng)
+    height += rng.normal(0, rng.uniform(*NOISE_M) * min(0.5 / cell, 1.5) ** 0.5, height.shape).astype(np.float32)
     holes = rng.random(height.shape, np.float32) < rng.choice([0.0, 0.0, 0.002, 0.02])
-    if rng.random() < 0.2:
+    if flight.has("height_holes"):
+        holes |= removed
+    if rng.random() < 0.15:
         holes |= _blots(height.shape, rng)
     wide = cv2.resize(height, (frame.cols, frame.rows), interpolation=cv2.INTER_LINEAR)
     gone = cv2.resize(holes.astype(np.uint8), (frame.cols, frame.rows), interpolation=cv2.INTER_NEAREST)
@@ -52,24 +69,39 @@ def sense_height(
     return wide
 
 
-def _stand_up(height: NDArray[np.float32], world: World, coarse: Frame, flight: Flight) -> None:
-    """Put onto the height raster what the sensor's ground filter leaves in."""
+def coarse_frame(frame: Frame, cell: float) -> Frame:
+    """Return the frame with cells of about `cell` metres over the same square."""
+    side = frame.rows * frame.pixel
+    count = max(round(side / cell), 2)
+    return Frame(count, count, side / count, frame.left, frame.top)
+
+
+def standing_height(world: World, coarse: Frame) -> dict[str, NDArray[np.float32]]:
+    """Height above ground of "houses", "crowns" and "cars" (all lower bodies): (rows, cols) metres each."""
+    above = {what: np.zeros((coarse.rows, coarse.cols), np.float32) for what in ("houses", "crowns", "cars")}
     for body in world.bodies:
-        left_in = flight.has("height_with_houses" if body.what in ("house", "hall") else "height_with_cars")
-        patch = cover_area(body.footprint, coarse) if left_in else None
+        patch = cover_area(body.footprint, coarse)
         if patch is not None:
-            height[patch.window] += (patch.cover > 0.5) * np.float32(body.top)
-    if not flight.has("height_with_crowns"):
-        return
-    for crown in world.crowns:
-        window = coarse.window([crown.x - crown.radius, crown.y - crown.radius, crown.x + crown.radius, crown.y + crown.radius])
-        if window is None:
-            continue
-        x = coarse.left + (np.arange(window[1].start, window[1].stop) + 0.5) * coarse.pixel - crown.x
-        y = coarse.top - (np.arange(window[0].start, window[0].stop)[:, None] + 0.5) * coarse.pixel - crown.y
-        dome = np.sqrt(np.clip(1 - (x * x + y * y) / crown.radius**2, 0, 1))
-        lifted = np.where(dome > 0, crown.height * (0.45 + 0.55 * dome), 0).astype(np.float32)
-        height[window] += lifted
+            target = above["houses" if body.what in BUILT else "cars"][patch.window]
+            np.maximum(target, (patch.cover > 0.5) * np.float32(body.top), out=target)
+    for crown in (crown for crown in world.crowns if not is_bare(crown)):
+        x0, y0, radius = crown.x, crown.y, crown.radius
+        window = coarse.window([x0 - radius, y0 - radius, x0 + radius, y0 + radius])
+        if window is not None:
+            x = coarse.left + (np.arange(window[1].start, window[1].stop) + 0.5) * coarse.pixel - x0
+            y = coarse.top - (np.arange(window[0].start, window[0].stop)[:, None] + 0.5) * coarse.pixel - y0
+            dome = np.sqrt(np.clip(1 - (x * x + y * y) / radius**2, 0, 1))
+            lifted = np.where(dome > 0, crown.height * (0.45 + 0.55 * dome), 0).astype(np.float32)
+            np.maximum(above["crowns"][window], lifted, out=above["crowns"][window])
+    return above
+
+
+def scatter(cells: NDArray[np.float32], rng: np.random.Generator) -> NDArray[np.float32]:
+    """Let each cell take the value of itself or a neighbour, as the nearest of scattered returns does."""
+    rows, cols = cells.shape[:2]
+    r = np.clip(np.arange(rows)[:, None] + rng.integers(-1, 2, (rows, cols)), 0, rows - 1)
+    c = np.clip(np.arange(cols) + rng.integers(-1, 2, (rows, cols)), 0, cols - 1)
+    return cells[r, c]
 
 
 def _blots(shape: tuple[int, int], rng: np.random.Generator) -> NDArray[np.bool_]:

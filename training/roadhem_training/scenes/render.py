@@ -74,6 +74,9 @@ def render(world: World, seed: int, pixel: float = PIXEL_M) -> Scene:
     flight = draw_flight(np.random.default_rng([seed, 0]))
     seen = view(world, flight, seed, pixel)
     picture, valid = take_picture(seen.light, pixel, flight, np.random.default_rng([seed, 1]))
+    if flight.has("intensity") and flight.has("height_holes"):
+        valid &= ~seen.hidden
+        picture = picture * valid[..., None]
     frame = Frame.of_size(world.size, pixel)
     height = sense_height(world, seen.ground, frame, flight, np.random.default_rng([seed, 2]))
     return Scene(world, pixel, picture, valid, height, seen.shadow, seen.hidden)
