@@ -32,7 +32,7 @@ OVERLAP = 0.3  # metres by which a part reaches into the road it widens
 def bays(rng: Rng, plan: Plan, share: float) -> None:
     """Add parking and bus bays, turning lanes and build-outs along the plan's roads."""
     for k, road in enumerate(plan.roads):
-        if road.rank == "alley":
+        if road.rank not in ("main", "street", "close"):
             continue
         for a, b in plan.clear_spans(k, 14.0):
             for side in (-1, 1):

@@ -16,7 +16,10 @@ from roadhem_training.scenes.layout.surface import polygons
 from roadhem_training.scenes.world import Body, OtherLine
 
 ROOFS = {"flat": 0.35, "gable": 0.45, "hip": 0.2}
-FENCED = {"perimeter": 0.25, "detached": 0.5, "halls": 0.4, "park": 0.3, "field": 0.15, "wood": 0.1, "square": 0.1, "waste": 0.3}
+FENCED = {
+    "perimeter": 0.25, "detached": 0.5, "halls": 0.4, "park": 0.3, "field": 0.15, "wood": 0.1, "square": 0.1,
+    "waste": 0.3,
+}  # fmt: skip
 THICKNESS = {"wall": 0.25, "fence": 0.08, "hedge": 0.8}
 PERIMETER_DEPTH, PERIMETER_WIDTH, PERIMETER_HEIGHT = (8.0, 13.0), (6.0, 16.0), (6.0, 19.0)
 SETBACK = (2.5, 8.0)
@@ -77,7 +80,8 @@ def _detached(rng: np.random.Generator, plot: Polygon, front: list[Stretch]) -> 
             out_by = back + 0.5 * deep + rng.normal(0, 0.5)
             area = oriented_box(x + d[1] * out_by, y - d[0] * out_by, wide, deep, heading)
             if chance(rng, 0.35):
-                wing = oriented_box(x + d[1] * (out_by - 2), y - d[0] * (out_by - 2), wide * 0.5, deep + 2.5, heading)
+                near = out_by - 2
+                wing = oriented_box(x + d[1] * near, y - d[0] * near, wide * 0.5, deep + 2.5, heading)
                 area = shapely.union(area, wing)
             if room.contains(area) and not any(area.distance(b.footprint) < 2.5 for b in out):
                 out.append(_house(rng, area, rng.uniform(4, 9), heading))

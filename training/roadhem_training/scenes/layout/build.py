@@ -11,7 +11,10 @@ from shapely.geometry import MultiPolygon, Polygon, box
 
 from roadhem.errors import BadInput
 from roadhem_training.scenes.layout import bands, clutter, land, lowering, markings, paving, traffic, trees
+from roadhem_training.scenes.layout.country import plan_country
+from roadhem_training.scenes.layout.motorway import plan_motorway
 from roadhem_training.scenes.layout.odds import STYLE_ODDS, pick
+from roadhem_training.scenes.layout.open_land import plan_open_land
 from roadhem_training.scenes.layout.plan import Plan
 from roadhem_training.scenes.layout.streets import plan_town
 from roadhem_training.scenes.layout.stretches import Stretch, boundary_stretches
@@ -27,6 +30,10 @@ PLANNERS: dict[str, Callable[[Rng, float, str], Plan]] = {
     "old_town": plan_town,
     "suburb": plan_town,
     "industry": plan_town,
+    "car_park": plan_town,
+    "country": plan_country,
+    "motorway": plan_motorway,
+    "no_road": plan_open_land,
 }
 
 
@@ -65,13 +72,13 @@ def _furnish(rng: Rng, plan: Plan, world: World, surface: MultiPolygon) -> None:
     world.edges = [TrueEdge(p.line, p.edging.kind, p.edging.height) for p in pieces]
     world.others = [line for piece in pieces for line in bands.other_lines(piece)] + plan.lines
     frame = box(-MARGIN, -MARGIN, plan.size + MARGIN, plan.size + MARGIN)
-    faces = polygons(frame.difference(surface))
+    faces = plan.parcels or polygons(frame.difference(surface))
     season = trees.Season(rng)
     world.ground.append(Cover(frame, "soil"))
     for face, front in zip(faces, _fronts(faces, pieces), strict=True):
         land.fill(rng, world, plan, season, face, front)
         world.curb_stones += bands.curb_stones(front, face)
-    world.ground += drives
+    world.ground += drives + plan.under
     paving.pave(rng, world, plan, surface)
     world.ground += plan.covers + paving.joints_seen(world.others) + bands.gutters(pieces, surface)
     for piece in pieces:

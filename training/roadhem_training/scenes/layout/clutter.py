@@ -38,7 +38,8 @@ def along(rng: np.random.Generator, stretch: Stretch) -> list[Body]:
     if chance(rng, RAIL):
         line = chain.piece(0.1 * chain.length, 0.9 * chain.length).offset_curve(-back)
         if not line.is_empty:
-            out.append(Body(line.buffer(0.06, cap_style="flat"), pick(rng, {0.75: 0.6, 1.1: 0.4}), "rail", 0.0, rng.random()))
+            top = pick(rng, {0.75: 0.6, 1.1: 0.4})
+            out.append(Body(line.buffer(0.06, cap_style="flat"), top, "rail", 0.0, rng.random()))
     return out
 
 

@@ -19,6 +19,7 @@ STRAIGHT = math.radians(176)  # legs at least this far apart need no curb return
 SHARPEST = math.radians(8)
 LONGEST_RETURN = 38.0  # metres from the node; radii that would need more are made smaller
 ROUNDABOUT = 0.08
+ROUNDABOUT_ALONE = 34.0  # metres to the next junction
 ROUNDABOUT_ISLAND = (2.0, 13.0)  # radius
 ROUNDABOUT_LANE = (4.5, 8.0)
 SLIP_LANE = 0.10  # share of corners between wide roads with a lane and an island of their own
@@ -50,14 +51,16 @@ def junctions(
     """Every meeting in `window` with its legs and rounded corners; and the islands that belong to them."""
     lines = np.array([r.axis.line for r in roads], dtype=object)
     nodes, islands = [], []
-    for x, y in meetings(roads, window):
+    met = meetings(roads, window)
+    for x, y in met:
         near = np.flatnonzero(shapely.dwithin(lines, shapely.points(x, y), 1.0))
         legs = [leg for i in near for leg in _legs(roads[i], int(i), x, y)]
         legs.sort(key=lambda leg: leg.heading)
         if len(legs) < 3:
             continue
         wide = max(roads[leg.road].half for leg in legs) > 3.2
-        if wide and chance(rng, roundabouts):
+        alone = all(math.hypot(x - a, y - b) > ROUNDABOUT_ALONE for a, b in met if (a, b) != (x, y))
+        if wide and alone and chance(rng, roundabouts):
             node, own = _roundabout(rng, roads, x, y, legs)
         else:
             node, own = _crossing(rng, roads, x, y, legs)
@@ -94,7 +97,7 @@ def _crossing(
         if angle > STRAIGHT or angle < SHARPEST:
             continue
         a, b = roads[leg.road].half, roads[legs[m].road].half
-        slip = min(a, b) > 3.2 and 1.0 < angle < 2.2 and chance(rng, SLIP_LANE)
+        slip = min(a, b) > 4.0 and 1.0 < angle < 2.2 and chance(rng, SLIP_LANE)
         wish = usual if chance(rng, 0.6) else pick_between(rng, odds.CORNER_RADIUS_ODDS)
         wish = between(rng, SLIP_RADIUS) if slip else wish
         bare = (b + a * math.cos(angle)) / math.sin(angle), (a + b * math.cos(angle)) / math.sin(angle)

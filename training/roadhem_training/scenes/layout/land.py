@@ -12,7 +12,6 @@ from shapely.geometry.base import BaseGeometry
 from roadhem_training.scenes.layout import bands, blocks, trees
 from roadhem_training.scenes.layout.odds import chance, pick
 from roadhem_training.scenes.layout.plan import Plan
-from roadhem_training.scenes.layout.shapes import oriented_box
 from roadhem_training.scenes.layout.stretches import Stretch
 from roadhem_training.scenes.layout.surface import polygons
 from roadhem_training.scenes.layout.traffic import vehicle
@@ -21,19 +20,26 @@ from roadhem_training.scenes.world import Body, Cover, OtherLine, World
 Rng = np.random.Generator
 
 GROUND = {
-    "perimeter": {"pavers": 0.2, "slabs": 0.15, "soil": 0.15, "grass": 0.2, "concrete": 0.1, "asphalt": 0.1, "gravel": 0.1},
+    "perimeter": {"pavers": 0.2, "slabs": 0.15, "soil": 0.15, "grass": 0.2, "concrete": 0.1, "gravel": 0.1},
     "detached": {"grass": 0.5, "mown": 0.3, "dry_grass": 0.1, "soil": 0.1},
-    "halls": {"concrete": 0.22, "asphalt": 0.26, "gravel": 0.2, "grass": 0.2, "dry_grass": 0.12},
+    "halls": {"concrete": 0.1, "asphalt": 0.08, "pavers": 0.1, "gravel": 0.27, "grass": 0.25, "dry_grass": 0.2},
     "park": {"grass": 0.5, "mown": 0.4, "dry_grass": 0.1},
     "field": {"field": 0.6, "grass": 0.25, "soil": 0.15},
     "wood": {"grass": 0.3, "leaves": 0.4, "planting": 0.3},
-    "square": {"pavers": 0.35, "slabs": 0.35, "setts": 0.2, "asphalt": 0.1},
+    "square": {"pavers": 0.4, "slabs": 0.4, "setts": 0.2},
     "waste": {"soil": 0.4, "gravel": 0.25, "sand": 0.1, "dry_grass": 0.25},
 }  # fmt: skip
-PATHS = {"perimeter": 0.1, "detached": 0.35, "halls": 0.1, "park": 0.7, "field": 0.2, "wood": 0.4, "square": 0.1, "waste": 0.2}
+PATHS = {
+    "perimeter": 0.1, "detached": 0.35, "halls": 0.1, "park": 0.7, "field": 0.2, "wood": 0.4, "square": 0.1,
+    "waste": 0.2,
+}  # fmt: skip
 PATCHES = {"perimeter": 2, "detached": 3, "halls": 3, "park": 2, "field": 1, "wood": 1, "square": 2, "waste": 4}
 PATCH = {"soil": 0.25, "gravel": 0.15, "planting": 0.25, "dry_grass": 0.15, "slabs": 0.1, "sand": 0.1}
-CARS_OFF_ROAD = 0.3
+CARS_OFF_ROAD = {
+    "perimeter": 0.3, "detached": 0.35, "halls": 0.6, "park": 0.02, "field": 0.01, "wood": 0.01, "square": 0.2,
+    "waste": 0.4,
+}  # fmt: skip
+PARCEL = (8.0, 40.0)
 
 
 def fill(rng: Rng, world: World, plan: Plan, season: trees.Season, face: Polygon, front: list[Stretch]) -> None:
@@ -48,8 +54,8 @@ def fill(rng: Rng, world: World, plan: Plan, season: trees.Season, face: Polygon
     heading = rng.uniform(0, math.pi)
     world.ground.append(Cover(face, pick(rng, GROUND[use]), float(rng.normal(0, 0.3)), 0.0, relief, heading))
     walks = bands.walks(front, face)
-    taken = shapely.union_all([c.area for c in walks] + [bands.band(s, s.edging.stone, face) for s in front if s.edging.stone])
-    plot = face.difference(taken).buffer(-0.05)
+    stones = [bands.band(s, s.edging.stone, face) for s in front if s.edging.stone]
+    plot = face.difference(shapely.union_all([c.area for c in walks] + stones)).buffer(-0.05)
     built = blocks.buildings(rng, use, plot, front)
     fences, lines = blocks.enclosure(rng, use, plot)
     garden = plot.buffer(-0.8).difference(shapely.union_all([b.footprint.buffer(0.8, quad_segs=2) for b in built]))
@@ -58,7 +64,9 @@ def fill(rng: Rng, world: World, plan: Plan, season: trees.Season, face: Polygon
     world.bodies += built + fences
     world.others += lines + blocks.roof_lines(built)
     world.crowns += trees.scattered(rng, season, garden, trees.PER_HECTARE[use])
-    if chance(rng, CARS_OFF_ROAD):
+    if use in ("field", "wood"):
+        _parcels(rng, world, plot, heading, relief)
+    if chance(rng, CARS_OFF_ROAD[use]):
         world.bodies += _cars(rng, garden, int(rng.integers(1, 5)))
 
 
@@ -83,11 +91,12 @@ def _ground(rng: Rng, world: World, use: str, garden: BaseGeometry, relief: floa
         area = _blob(rng, x, y, rng.uniform(1, 7)).intersection(garden)
         if not area.is_empty:
             soft = rng.uniform(0.1, 1.0) if chance(rng, 0.7) else 0.0
-            world.ground.append(Cover(MultiPolygon(polygons(area)), pick(rng, PATCH), float(rng.normal(0, 0.3)), soft, relief))
+            tone = float(rng.normal(0, 0.3))
+            world.ground.append(Cover(MultiPolygon(polygons(area)), pick(rng, PATCH), tone, soft, relief))
     if chance(rng, PATHS[use]):
         material = pick(rng, {"gravel": 0.3, "asphalt": 0.25, "pavers": 0.2, "slabs": 0.15, "sand": 0.1})
         for _ in range(int(rng.integers(1, 3))):
-            line = _path(rng, garden)
+            line = _path(rng, shapely.convex_hull(garden))
             half = rng.uniform(0.4, 1.6)
             area = line.buffer(half, cap_style="flat").intersection(garden)
             world.ground.append(Cover(MultiPolygon(polygons(area)), material, float(rng.normal(0, 0.3)), 0.0, relief))
@@ -96,11 +105,31 @@ def _ground(rng: Rng, world: World, use: str, garden: BaseGeometry, relief: floa
 
 
 def _path(rng: Rng, garden: BaseGeometry) -> LineString:
-    x0, y0, x1, y1 = garden.bounds
-    a, c = rng.uniform((x0, y0), (x1, y1)), rng.uniform((x0, y0), (x1, y1))
-    b = 0.5 * (a + c) + rng.normal(0, 0.15 * math.hypot(x1 - x0, y1 - y0), 2)
-    t = np.linspace(-0.5, 1.5, 50)[:, None]
+    """A gently bent line from border to border."""
+    along = np.array([0.0, rng.uniform(0.3, 0.7)]) + rng.uniform(0, 0.3)
+    a, c = shapely.get_coordinates(shapely.line_interpolate_point(garden.boundary, along, normalized=True))
+    b = 0.5 * (a + c) + rng.normal(0, 0.08 * float(np.hypot(*(c - a))), 2)
+    t = np.linspace(0, 1, 40)[:, None]
     return LineString((1 - t) ** 2 * a + 2 * t * (1 - t) * b + t * t * c)
+
+
+def _parcels(rng: Rng, world: World, plot: BaseGeometry, heading: float, relief: float) -> None:
+    """Fields side by side, each with its own crop."""
+    if plot.is_empty:
+        return
+    x, y = shapely.get_coordinates(plot.centroid)[0]
+    reach = math.hypot(plot.bounds[2] - plot.bounds[0], plot.bounds[3] - plot.bounds[1])
+    u = np.array([math.cos(heading), math.sin(heading)])
+    v = np.array([-u[1], u[0]])
+    at = -reach
+    while at < reach:
+        end = at + rng.uniform(*PARCEL)
+        corners = [[x, y] + a * u + b * v for a, b in ((-reach, at), (reach, at), (reach, end), (-reach, end))]
+        area = polygons(Polygon(corners).intersection(plot)) if chance(rng, 0.6) else []
+        if area:
+            crop = pick(rng, {"field": 0.5, "grass": 0.2, "dry_grass": 0.15, "soil": 0.15})
+            world.ground.append(Cover(MultiPolygon(area), crop, float(rng.normal(0, 0.35)), 0.0, relief, heading))
+        at = end
 
 
 def _blob(rng: Rng, x: float, y: float, radius: float) -> Polygon:
@@ -122,12 +151,3 @@ def _cars(rng: Rng, garden: BaseGeometry, number: int) -> list[Body]:
         if garden.contains(car.footprint) and not any(car.footprint.intersects(c.footprint) for c in out):
             out.append(car)
     return out[:number]
-
-
-def pitch(rng: Rng, world: World, x: float, y: float, heading: float) -> None:
-    """A sports ground with its lines: bright lines on even ground, and no edge of a road."""
-    length, width = rng.uniform(20, 60), rng.uniform(12, 35)
-    ground = pick(rng, {"mown": 0.5, "rubber": 0.3, "sand": 0.1, "asphalt": 0.1})
-    world.ground.append(Cover(oriented_box(x, y, length + 4, width + 4, heading), ground, float(rng.normal(0, 0.2))))
-    outline = oriented_box(x, y, length, width, heading)
-    world.others.append(OtherLine(LineString(outline.exterior), "marking"))

@@ -17,13 +17,14 @@ from roadhem_training.scenes.layout.plan import Edging, Island, Part, Plan
 from roadhem_training.scenes.layout.shapes import oriented_box
 from roadhem_training.scenes.layout.surface import polygons
 from roadhem_training.scenes.layout.traffic import vehicle
-from roadhem_training.scenes.world import OtherLine, Paint
+from roadhem_training.scenes.world import Paint
 
 Rng = np.random.Generator
 
 STALL_WIDTH, STALL_LENGTH = (2.3, 2.75), (4.7, 5.5)
 AISLE = (5.5, 7.2)
 MOUTH = (3.5, 8.0)
+LONGEST_ACCESS = 40.0
 MOUTH_RADIUS = {(0.0, 0.0): 0.3, (0.5, 2.0): 0.25, (2.0, 6.0): 0.45}
 LOT_MATERIAL = {"asphalt": 0.68, "concrete": 0.12, "pavers": 0.12, "setts": 0.04, "gravel": 0.04}
 FULL = (0.1, 0.95)
@@ -66,8 +67,8 @@ def _place(rng: Rng, plan: Plan, surface: BaseGeometry, face: Polygon, room: Pol
     material, tone = pick(rng, LOT_MATERIAL), float(np.clip(rng.normal(0.1, 0.4), -1, 1))
     if chance(rng, 0.6):
         area = area.buffer(-1.0, join_style="mitre").buffer(1.0, quad_segs=16)
-    mouths = [_mouth(rng, area, surface, face, heading) for _ in range(2 if chance(rng, 0.3) else 1)]
-    found = [m for m in mouths if m]
+    mouths = (_mouth(rng, area, surface, face, heading) for _ in range(6))
+    found = [m for m in mouths if m][: 2 if chance(rng, 0.35) else 1]
     if not found:
         return
     whole = shapely.union_all([area, *(g for m in found for g in m)])
@@ -91,8 +92,8 @@ def _fitted(rng: Rng, room: Polygon, heading: float) -> tuple[Polygon, float, fl
     x, y = shapely.get_coordinates(spot)[0]
     if radius < 4.5:
         return None
-    for stretch in rng.uniform(1.0, 4.0, 6)[np.argsort(-rng.uniform(size=6))]:
-        width = radius * 2 * rng.uniform(0.6, 0.95)
+    for stretch in np.sort(rng.uniform(1.0, 3.0, 8))[::-1]:
+        width = radius * 2 * rng.uniform(0.5, 0.98)
         area = oriented_box(x, y, width * stretch, width, heading)
         if room.contains(area):
             return area, width * stretch, width
@@ -110,12 +111,12 @@ def _mouth(
     x, y = shapely.get_coordinates(lot.centroid)[0]
     shift = rng.uniform(-0.3, 0.3) * math.sqrt(lot.area)
     start = np.array([x, y]) + shift * np.array([-across[1], across[0]])
-    ray = shapely.LineString([start, start + 60 * across])
+    ray = shapely.LineString([start, start + 200 * across])
     hit = ray.intersection(surface)
     if hit.is_empty:
         return None
     reach = Point(start).distance(hit)
-    if Point(start).distance(lot.exterior) > reach or reach > 45:
+    if not 0 < reach - Point(start).distance(lot.exterior) < LONGEST_ACCESS:
         return None
     end = start + (reach + 1.5) * across
     lane = Alignment(np.array([start, end])).strip(0, reach + 1.5, -width / 2, width / 2)
@@ -154,17 +155,18 @@ def stalls(
             continue
         x0 = -0.5 * n * wide
         if end:
-            plan.islands += [_end_island(rng, frame, x, low, high, end, bare, ground) for x in (x0 - end, x0 + n * wide)]
+            for x in (x0 - end, x0 + n * wide):
+                plan.islands.append(_end_island(rng, frame, x, low, high, end, bare, ground))
         if spined and double and chance(rng, 0.7):
             spine = frame.box(x0 + 0.3, x0 + n * wide - 0.3, low + deep - 0.6, low + deep + 0.6)
             plan.islands.append(Island(spine, bare, ground, "island"))
         for row in range(2 if double else 1):
             base = low + row * deep
-            lines += [frame.box(x0 + k * wide - line / 2, x0 + k * wide + line / 2, base, base + deep) for k in range(n + 1)]
+            for k in range(n + 1):
+                lines.append(frame.box(x0 + k * wide - line / 2, x0 + k * wide + line / 2, base, base + deep))
             for k in np.flatnonzero(rng.random(n) < fill):
                 x, y = frame.at(x0 + (k + 0.5) * wide + rng.normal(0, 0.1), base + 0.5 * deep + rng.normal(0, 0.2))
                 plan.bodies.append(vehicle(rng, x, y, heading + math.pi / 2 * (1 if chance(rng, 0.5) else -1)))
-        plan.lines.append(OtherLine(shapely.LineString([frame.at(x0, low + deep), frame.at(x0 + n * wide, low + deep)]), "marking"))
     shapely.prepare(area)
     lines = [g for g in lines if area.contains(g)]
     if marked and lines:
@@ -186,7 +188,7 @@ def _rows(width: float, deep: float, aisle: float) -> list[tuple[float, bool]]:
 def _end_island(
     rng: Rng, frame: _Frame, x: float, low: float, high: float, end: float, edging: Edging, fill: str
 ) -> Island:
-    nose = rng.uniform(0.3, 0.48) * end
+    nose = rng.uniform(0.3, 0.48) * (end - 0.1)
     area = frame.box(x + 0.05, x + end - 0.05, low + 0.3, high - 0.3)
     area = area.buffer(-nose, join_style="mitre").buffer(nose, quad_segs=16)
     return Island(area, edging, fill, "island")

@@ -19,6 +19,7 @@ DRIVE_DEPTH: Span = (3.0, 9.0)
 FLARED, FLARE = 0.45, (0.4, 1.5)
 GUTTERLESS = 0.35  # share of driveways at whose mouth the gutter stops
 THROUGH = 0.3  # share of driveways whose paving runs through the footway
+NO_DRIVEWAYS = ("motorway", "ramp")
 FROM_END = 3.0  # metres from a stretch's end to its first driveway
 STRAIGHT_ENOUGH = 0.985  # cosine of the turn of the curb over a driveway
 OFF_LINE = 0.15  # metres a planned change may lie off the stretch it belongs to
@@ -38,7 +39,8 @@ def change(
     places = sorted(_planned(plan, stretch, changes), key=lambda p: p[0])
     places = [p for k, p in enumerate(places) if k == 0 or p[0] > places[k - 1][1]]
     drives: list[Place] = []
-    if stretch.edging.kind == "raised" and stretch.line.length > 8:
+    fast = stretch.road >= 0 and plan.roads[stretch.road].rank in NO_DRIVEWAYS
+    if stretch.edging.kind == "raised" and stretch.line.length > 8 and not fast:
         drives = _driveways(rng, chain, stretch.edging, places, plan.driveway_every)
     material, tone = pick(rng, DRIVE_MATERIAL), float(rng.normal(0, 0.3))
     covers = [c for a, b, _ in drives for c in _paving(rng, chain, a, b, stretch.edging, material, tone)]
@@ -93,7 +95,8 @@ def _paving(
     area: Polygon | MultiPolygon = Polygon([p, q, inner[0], inner[0] + depth * out, inner[1] + depth * out, inner[1]])
     area = area.buffer(0)
     if edging.footway and not chance(rng, THROUGH):
-        walk = Polygon([p - 9 * d + (edging.stone + edging.verge) * out, q + 9 * d + (edging.stone + edging.verge) * out,
+        near = edging.stone + edging.verge
+        walk = Polygon([p - 9 * d + near * out, q + 9 * d + near * out,
                         q + 9 * d + edging.depth * out, p - 9 * d + edging.depth * out])  # fmt: skip
         area = area.difference(walk)
     return [Cover(area, material, tone, relief=edging.height, direction=float(np.arctan2(d[1], d[0])))]

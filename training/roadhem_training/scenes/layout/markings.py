@@ -67,10 +67,11 @@ def paint(rng: Rng, plan: Plan, surface: MultiPolygon) -> tuple[list[Paint], lis
 
 def _lane_lines(rng: Rng, road: Road, colour: str) -> list[tuple[float, float, bool, str]]:
     """(offset, width factor, solid, colour) of the lines between lanes."""
-    lane = road.width / road.lanes
+    right, left = road.shoulders
+    lane = (road.width - right - left) / road.lanes
     out = []
     for k in range(1, road.lanes):
-        at = k * lane - road.half
+        at = k * lane + right - road.half
         if road.oneway or 2 * k != road.lanes:
             out.append((at, 1.0, False, "white"))
         elif chance(rng, CENTRE_DOUBLE):
@@ -83,6 +84,9 @@ def _lane_lines(rng: Rng, road: Road, colour: str) -> list[tuple[float, float, b
 def _side_lines(rng: Rng, road: Road) -> list[tuple[float, float, bool, str]]:
     out: list[tuple[float, float, bool, str]] = []
     flush = "flush" in (road.left.kind, road.right.kind)
+    if max(road.shoulders) > 0:
+        right, left = road.shoulders
+        return [(right - road.half, 1.6, True, "white"), (road.half - left, 1.6, True, "white")]
     if chance(rng, FLUSH_EDGE_LINE if flush else CURB_EDGE_LINE):
         at, wide = road.half - between(rng, EDGE_LINE_IN), pick(rng, {1.0: 0.7, 2.0: 0.3})
         out += [(-at, wide, True, "white"), (at, wide, True, "white")]
@@ -151,10 +155,13 @@ def _arrow(road: Road, s: float, d: float, sign: int, what: str) -> BaseGeometry
     return Polygon(shape @ np.array([[c, n], [-n, c]]) + [x, y])
 
 
-_AHEAD: NDArray[np.float64] = np.array([[0, 0], [-1.8, 0.45], [-1.8, 0.08], [-5, 0.08], [-5, -0.08], [-1.8, -0.08], [-1.8, -0.45]])
-_TURN: NDArray[np.float64] = np.array(
-    [[-0.6, 0.9], [-0.1, 0.3], [-0.5, 0.3], [-0.5, -0.08], [-5, -0.08], [-5, 0.08], [-0.7, 0.08], [-0.7, 0.3], [-1.1, 0.3]]
+_AHEAD: NDArray[np.float64] = np.array(
+    [[0, 0], [-1.8, 0.45], [-1.8, 0.08], [-5, 0.08], [-5, -0.08], [-1.8, -0.08], [-1.8, -0.45]]
 )
+_TURN: NDArray[np.float64] = np.array(
+    [[-0.6, 0.9], [-0.1, 0.3], [-0.5, 0.3], [-0.5, -0.08], [-5, -0.08], [-5, 0.08], [-0.7, 0.08], [-0.7, 0.3],
+     [-1.1, 0.3]]
+)  # fmt: skip
 
 
 def hatching(area: Polygon, heading: float, colour: str = "white", wear: float = 0.3) -> list[Paint]:

@@ -18,7 +18,8 @@ T = TypeVar("T")
 Span = tuple[float, float]
 
 STYLE_ODDS = {
-    "old_town": 0.4, "suburb": 0.38, "industry": 0.22,
+    "old_town": 0.27, "suburb": 0.25, "industry": 0.15, "car_park": 0.11, "country": 0.1, "motorway": 0.07,
+    "no_road": 0.05,
 }  # fmt: skip
 
 CORNER_RADIUS_ODDS: Mapping[Span, float] = {
@@ -30,7 +31,9 @@ GUTTER: Span = (0.3, 0.6)
 CURB_STONE: Span = (0.08, 0.30)
 DRIVEWAY: Span = (3.0, 7.0)
 RAMP: Span = (1.2, 5.0)
-ISLAND_FILL = {"grass": 0.3, "mown": 0.1, "planting": 0.2, "pavers": 0.15, "setts": 0.05, "asphalt": 0.08, "slabs": 0.12}
+ISLAND_FILL = {
+    "grass": 0.3, "mown": 0.1, "planting": 0.2, "pavers": 0.15, "setts": 0.05, "asphalt": 0.08, "slabs": 0.12,
+}  # fmt: skip
 FOOTWAY_LIKE_ROAD = 0.12  # share of footways beside asphalt that are asphalt too
 THIN_STRIP = 0.12  # share of sides with a strip 0.3–0.9 m wide behind the curb that makes a line of its own
 GUTTER_ODDS = {"stone": 0.5, "asphalt": 0.25, "setts": 0.25}
@@ -71,6 +74,7 @@ class StreetOdds:
     bays: float
     lots: float
     closes: float
+    in_block: bool = False
 
 
 STREETS: Mapping[str, StreetOdds] = {
@@ -98,12 +102,25 @@ STREETS: Mapping[str, StreetOdds] = {
         median=0.25, parking=0.35, marked=0.65, driveway_every=(25, 60),
         flush=0.1, flush_alley=0.5, bays=0.2, lots=0.6, closes=0.2,
     ),
+    "car_park": StreetOdds(
+        block=(80, 125), skew=0.08, warp=0.2, crossing=0.3,
+        width={"main": (9, 17), "street": (6, 10), "alley": (4.5, 7), "close": (6, 9)},
+        surface={"asphalt": 0.9, "concrete": 0.1},
+        gutter=0.4, stone=0.7, verge=0.5, footway=0.6, footway_width=(1.4, 2.5),
+        median=0.35, parking=0.2, marked=0.75, driveway_every=(35, 80),
+        flush=0.08, flush_alley=0.3, bays=0.25, lots=1.0, closes=0.0, in_block=True,
+    ),
 }  # fmt: skip
 
 LAND = {
     "old_town": {"perimeter": 0.72, "detached": 0.05, "park": 0.09, "square": 0.09, "waste": 0.05},
     "suburb": {"detached": 0.78, "perimeter": 0.04, "park": 0.1, "wood": 0.04, "waste": 0.04},
     "industry": {"halls": 0.66, "detached": 0.04, "park": 0.08, "waste": 0.16, "field": 0.06},
+    "car_park": {"halls": 0.25, "park": 0.45, "square": 0.15, "waste": 0.1, "wood": 0.05},
+    "country": {"field": 0.52, "wood": 0.16, "park": 0.12, "detached": 0.12, "waste": 0.08},
+    "motorway": {"park": 0.35, "wood": 0.2, "field": 0.3, "halls": 0.08, "waste": 0.07},
+    "no_road": {"park": 0.22, "detached": 0.14, "perimeter": 0.14, "field": 0.16, "wood": 0.1, "halls": 0.08,
+                "square": 0.1, "waste": 0.06},
 }
 
 

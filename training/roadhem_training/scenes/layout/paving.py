@@ -71,7 +71,8 @@ def _wear(rng: Rng, world: World, plan: Plan, k: int, road: Road, surface: Multi
         for _ in range(count(PATCH_PER_100_M)):
             s, d = rng.uniform(0, length - 0.5), rng.uniform(-road.half, road.half)
             s1, wide = min(length, s + rng.uniform(0.6, 7)), rng.uniform(0.5, 2.2)
-            out.append((axis.strip(s, s1, d - wide / 2, d + wide / 2), "asphalt", float(rng.normal(0, PATCH_TONE)), 0.0))
+            area = axis.strip(s, s1, d - wide / 2, d + wide / 2)
+            out.append((area, "asphalt", float(rng.normal(0, PATCH_TONE)), 0.0))
         for _ in range(count(TRENCH_PER_100_M)):
             out.append((_trench(rng, road), "asphalt", float(rng.normal(0, PATCH_TONE)), 0.0))
         for _ in range(count(OVERLAY_PER_100_M)):
@@ -82,7 +83,8 @@ def _wear(rng: Rng, world: World, plan: Plan, k: int, road: Road, surface: Multi
     for _ in range(count(STAIN_PER_100_M)):
         x, y = axis.at(rng.uniform(0, length), rng.uniform(-road.half, road.half))
         stain = Point(x, y).buffer(rng.uniform(0.2, 1.2), quad_segs=4)
-        out.append((stain, pick(rng, {"asphalt": 0.7, "wet": 0.2, "soil": 0.1}), float(rng.normal(-0.3, 0.3)), rng.uniform(0.2, 0.8)))
+        material = pick(rng, {"asphalt": 0.7, "wet": 0.2, "soil": 0.1})
+        out.append((stain, material, float(rng.normal(-0.3, 0.3)), rng.uniform(0.2, 0.8)))
     for _ in range(count(MANHOLE_PER_100_M)):
         x, y = axis.at(rng.uniform(0, length), rng.normal(0, 0.4) * road.half)
         out.append((Point(x, y).buffer(rng.uniform(0.25, 0.4), quad_segs=6), "metal", float(rng.normal(0, 0.3)), 0.0))

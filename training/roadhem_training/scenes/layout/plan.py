@@ -77,6 +77,7 @@ class Road:
     ----------
     right, left : edging of its two sides.
     parking : (right, left), whether cars may stand along the side.
+    shoulders : (right, left), widths of paved shoulder outside the lanes.
     """
 
     axis: Alignment
@@ -90,6 +91,7 @@ class Road:
     oneway: bool = False
     parking: tuple[bool, bool] = (False, False)
     marked: bool = True
+    shoulders: tuple[float, float] = (0.0, 0.0)
     direction: float = 0.0
 
     @property
@@ -161,7 +163,8 @@ class Plan:
     Attributes
     ----------
     land : odds of what fills the land between the roads.
-    covers : ground to paint over the carriageways; paints, bodies, crowns, lines : as in World.
+    parcels : the pieces of land where there is no road to bound them.
+    under, covers : ground to paint under and over the carriageways; paints, bodies, crowns, lines : as in World.
     taken : by (road, side), the stations where something is at the side already.
     """
 
@@ -175,6 +178,8 @@ class Plan:
     crosswalks: list[Crosswalk] = field(default_factory=list)
     land: Mapping[str, float] = field(default_factory=dict)
     driveway_every: tuple[float, float] = (20.0, 50.0)
+    parcels: list[Polygon] = field(default_factory=list)
+    under: list[Cover] = field(default_factory=list)
     covers: list[Cover] = field(default_factory=list)
     paints: list[Paint] = field(default_factory=list)
     bodies: list[Body] = field(default_factory=list)

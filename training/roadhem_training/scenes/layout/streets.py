@@ -35,7 +35,7 @@ def street_axes(rng: Rng, size: float, reach: float, rules: StreetOdds) -> list[
     if chance(rng, rules.warp):
         bend = _bend(rng)
         axes = [(_apply(bend, line), rank) for line, rank in axes]
-    x, y = _focus(rng, axes, extent, size)
+    x, y = (_open_spot if rules.in_block else _focus)(rng, axes, extent, size)
     axes = [(shapely.affinity.translate(line, 0.5 * size - x, 0.5 * size - y), rank) for line, rank in axes]
     window = box(-reach, -reach, size + reach, size + reach)
     return [(line, rank) for line, rank in axes if line.intersects(window)]
@@ -107,8 +107,16 @@ def _apply(bend: Callable[[NDArray[np.float64]], NDArray[np.float64]], line: Lin
     return LineString(bend(dense)).simplify(0.001)
 
 
+def _open_spot(rng: Rng, axes: list[Axis], extent: float, size: float) -> tuple[float, float]:
+    """The place furthest from all streets among some tries."""
+    tries = rng.uniform(-1, 1, (40, 2)) * max(20.0, 0.8 * extent - 0.5 * size)
+    gaps = shapely.distance(shapely.MultiLineString([line for line, _ in axes]), shapely.points(tries))
+    x, y = tries[int(np.argmax(gaps))] + rng.normal(0, 0.1 * size, 2)
+    return float(x), float(y)
+
+
 def _focus(rng: Rng, axes: list[Axis], extent: float, size: float) -> tuple[float, float]:
-    """Where to put the frame's middle: near a street, in small frames nearly always at a junction."""
+    """Where to put the frame's middle: near a junction."""
     ends = np.array([p for line, _ in axes for p in (line.coords[0], line.coords[-1])])
     near = ends[np.hypot(*ends.T) < 0.9 * extent - 0.5 * size] if len(ends) else ends
     if not len(near):
@@ -129,7 +137,7 @@ def _road(rng: Rng, line: LineString, rank: str, rules: StreetOdds, family: Fami
     lanes = max(1 if oneway else 2, int(width // 3.1) if rank == "main" else (1 if width < 4.8 else 2))
     material = pick(rng, rules.surface) if chance(rng, 0.35) else family.surface
     parking = [width > 6 and chance(rng, rules.parking) for _ in range(2)]
-    flush = rank == "alley" and chance(rng, rules.flush_alley) or chance(rng, rules.flush)
+    flush = chance(rng, rules.flush_alley if rank == "alley" else rules.flush)
     right, left = (_side(rng, rules, family, flush, material) for _ in range(2))
     return Road(
         axis=Alignment(shapely.get_coordinates(line)), width=width, lanes=lanes, rank=rank, right=right, left=left,
@@ -175,7 +183,9 @@ def flush_edging(rng: Rng) -> Edging:
     shoulder = pick(rng, {"grass": 0.35, "dry_grass": 0.15, "gravel": 0.25, "soil": 0.25})
     wide = rng.uniform(0.25, 2.0) if chance(rng, 0.8) else 0.0
     stone = rng.uniform(0.08, 0.25) if chance(rng, 0.15) else 0.0
-    return Edging("flush", 0.0, stone=stone, stone_material=pick(rng, odds.STONE_ODDS), verge=wide, verge_material=shoulder)
+    return Edging(
+        "flush", 0.0, stone=stone, stone_material=pick(rng, odds.STONE_ODDS), verge=wide, verge_material=shoulder
+    )
 
 
 def plan_town(rng: Rng, size: float, style: str) -> Plan:

@@ -22,6 +22,7 @@ USUAL_LENGTH, USUAL_WIDTH = 4.5, 1.8
 BUMPER_GAP = (0.6, 2.0)
 CLEAR_OF_JUNCTION = 5.0
 GROUND_CLEARANCE = 0.15
+BAY_PAVING = ("setts", "pavers", "concrete", "gravel")
 VANS = 0.12
 MOVING_EVERY = (18.0, 70.0)
 TRUCKS = 0.12
@@ -44,12 +45,14 @@ def parked(rng: np.random.Generator, plan: Plan, stretches: list[Stretch]) -> li
     nodes = shapely.MultiPoint([(n.x, n.y) for n in plan.junctions])
     for stretch in stretches:
         road = plan.roads[stretch.road] if stretch.road >= 0 else None
-        bay = stretch.owner == "bay" or (stretch.edging.kind == "flush" and road is not None and road.rank != "country")
+        street = road is not None and road.rank in ("main", "street", "close")
+        flush = street and stretch.edging.kind == "flush" and stretch.edging.verge > USUAL_WIDTH
+        bay = stretch.owner == "bay" or (flush and stretch.edging.verge_material in BAY_PAVING)
         allowed = road is not None and road.parking[0 if stretch.side < 0 else 1]
         if not (bay or allowed) or stretch.edging.kind == "lowered" or stretch.line.length < 6:
             continue
         chain, full = OpenChain(stretch.line), rng.uniform(0.3, 0.95)
-        side = -1.0 if stretch.edging.kind == "flush" and bay else 1.0
+        side = -1.0 if flush and bay else 1.0
         at = rng.uniform(0.5, 3.0)
         while at + CAR_LENGTH[1] < chain.length:
             (x, y), d = chain.frame(at + 0.5 * USUAL_LENGTH)

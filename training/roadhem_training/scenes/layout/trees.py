@@ -14,7 +14,8 @@ SEASON_DENSITY = {(0.85, 1.0): 0.6, (0.5, 0.85): 0.2, (0.05, 0.35): 0.2}
 GARDEN_SPECIES = {"round": 0.55, "conifer": 0.15, "bush": 0.25, "columnar": 0.05}
 AVENUE_SHARE = 0.4
 PER_HECTARE = {
-    "perimeter": 25, "detached": 60, "halls": 12, "park": 90, "field": 4, "wood": 420, "square": 25, "waste": 25, "island": 160,
+    "perimeter": 25, "detached": 60, "halls": 12, "park": 90, "field": 4, "wood": 420, "square": 25, "waste": 25,
+    "island": 160,
 }  # fmt: skip
 
 
