@@ -25,7 +25,7 @@ from roadhem.tiles.tile import ArrayTile
 
 CRS = "EPSG:25832"
 P, Q = -109_374, 9_768
-"""A page that begins a block of two and of three pages a side."""
+"""The page at the tiles' upper left."""
 EAST, NORTH = 51.2 * Q, -51.2 * P
 ROW, COL = P * PAGE_PIXELS, Q * PAGE_PIXELS
 DEFAULT_SHAPE = (1450, 1440)
@@ -64,13 +64,13 @@ PAGES = [(P + p, Q + q) for p in range(-1, 4) for q in range(-1, 4)]
 
 
 def test_pages_are_the_same_whatever_the_block(deep: Model) -> None:
-    """Should give the same bits for blocks of 1, 2 and 3 pages a side, loads at once or singly, in any order."""
+    """Should give the same bits for strips of 1, 2 and 3 pages, all loaded at once or singly, in any order."""
     mosaic = scene()
-    expected = FieldStore(mosaic, deep, pages_per_block=1).load(PAGES)
+    expected = FieldStore(mosaic, deep, strip=1).load(PAGES)
     assert sum(page is not BLANK for page in expected.values()) == 9
     assert len({page.tobytes() for page in expected.values() if page is not BLANK}) == 9
     for side in (2, 3):
-        found = FieldStore(mosaic, deep, pages_per_block=side).load(PAGES)
+        found = FieldStore(mosaic, deep, strip=side).load(PAGES)
         assert {place: page.tobytes() for place, page in found.items()} == {
             place: page.tobytes() for place, page in expected.items()
         }
@@ -79,22 +79,20 @@ def test_pages_are_the_same_whatever_the_block(deep: Model) -> None:
         assert single.page(*place).tobytes() == expected[place].tobytes()
 
 
-def test_large_blocks_are_used_where_they_pay(deep: Model, monkeypatch: pytest.MonkeyPatch) -> None:
-    """Should run the net on one large block for its whole set of pages, and on small ones for a few of them."""
-    ran: list[int] = []
+def test_strips_save_runs(deep: Model, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Should run the net on pairs of pages beside or below one another, and on single ones else."""
+    ran: list[tuple[int, int]] = []
     session = Model.session
 
     def counted(self: Model, rows: int, cols: int, threads: int) -> object:
-        ran.append(rows)
+        ran.append((rows, cols))
         return session(self, rows, cols, threads)
 
     monkeypatch.setattr(Model, "session", counted)
     mosaic = Mosaic.of([ArrayTile.of(image(), at(), CRS)])
     small, large = PAGE_PIXELS + 2 * deep.halo, 2 * PAGE_PIXELS + 2 * deep.halo
-    FieldStore(mosaic, deep).load([(P, Q)])
-    assert ran == [small]
-    FieldStore(mosaic, deep).load([(P + i, Q + j) for i in (0, 1) for j in (0, 1)])
-    assert ran == [small, large]
+    FieldStore(mosaic, deep).load([(P, Q), (P, Q + 1), (P + 1, Q), (P + 2, Q), (P + 2, Q + 2)])
+    assert ran == [(small, large), (large, small), (small, small)]
 
 
 @pytest.mark.parametrize("pixel", [0.1, 0.06, 0.12])
@@ -131,7 +129,7 @@ def test_too_small_a_halo_would_show(deep: Model, monkeypatch: pytest.MonkeyPatc
     """Should depend on the halo: without it, pages differ with the block, so that the tests above can fail."""
     monkeypatch.setitem(deep.card, "receptive_field", 0)
     mosaic = scene()
-    one, two = (FieldStore(mosaic, deep, pages_per_block=side).load(PAGES) for side in (1, 2))
+    one, two = (FieldStore(mosaic, deep, strip=side).load(PAGES) for side in (1, 2))
     assert any(one[place].tobytes() != two[place].tobytes() for place in PAGES)
 
 
@@ -341,7 +339,7 @@ def test_shipped_model_gives_the_same_pages_whatever_the_block(real: Path) -> No
     size = PAGE_PIXELS * 0.1
     places = [(p, q) for p in range(int(-maxy // size), int(-miny // size) + 1)
               for q in range(int(minx // size), int(maxx // size) + 1)]  # fmt: skip
-    expected = FieldStore(mosaic, model, pages_per_block=1).load(places)
-    found = FieldStore(mosaic, model, pages_per_block=2).load(places[::-1])
+    expected = FieldStore(mosaic, model, strip=1).load(places)
+    found = FieldStore(mosaic, model, strip=2).load(places[::-1])
     assert all(found[place].tobytes() == expected[place].tobytes() for place in places)
     assert any(page[..., :COVER].any() for page in expected.values())

@@ -7,6 +7,7 @@ from collections import OrderedDict
 from collections.abc import Iterable, Iterator, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
+from itertools import takewhile
 
 import numpy as np
 import onnxruntime
@@ -34,16 +35,17 @@ Page = NDArray[np.int16]
 
 @dataclass(frozen=True)
 class _Block:
-    """Pages that one run of the net computes: `side` x `side` of them from page (p, q)."""
+    """Pages that one run of the net computes: rows x cols of them from page (p, q)."""
 
     p: int
     q: int
-    side: int
+    rows: int
+    cols: int
 
     @property
     def pages(self) -> list[Place]:
         """All pages of the block, row by row."""
-        return [(self.p + i, self.q + j) for i in range(self.side) for j in range(self.side)]
+        return [(self.p + i, self.q + j) for i in range(self.rows) for j in range(self.cols)]
 
 
 @dataclass(frozen=True)
@@ -66,19 +68,18 @@ class FieldStore:
     mosaic, model : what to look at, and with which net.
     threads : threads of the net.
     cache_mb : memory for pages; the pages of a single load are all returned, even past it.
-    pages_per_block : pages along a side of the largest block that one run of the net computes; it is used where
-        that costs less than the missing pages one by one.
+    strip : pages that one run of the net computes at most, beside one another in a row or column.
     """
 
     def __init__(
-        self, mosaic: Mosaic, model: Model, *, threads: int = 1, cache_mb: float = 256, pages_per_block: int = 2
+        self, mosaic: Mosaic, model: Model, *, threads: int = 1, cache_mb: float = 256, strip: int = 2
     ) -> None:
         self.mosaic, self.model = mosaic, model
         self._pages: OrderedDict[Place, Page] = OrderedDict()
         self._most = max(1, int(cache_mb * 2**20) // PAGE_BYTES)
-        self._per_block = pages_per_block
+        self._strip = strip
         self._threads = threads
-        self._sessions: dict[int, onnxruntime.InferenceSession] = {}
+        self._sessions: dict[tuple[int, int], onnxruntime.InferenceSession] = {}
         self._reader = ThreadPoolExecutor(1, thread_name_prefix="roadhem-read")
         self._lock = threading.RLock()
 
@@ -98,8 +99,7 @@ class FieldStore:
             missing = [place for place in wanted if place not in found]
             for prepared in self._prepared(self._blocks(missing)):
                 for place, page in self._run(prepared):
-                    if place in wanted:
-                        found[place] = page
+                    found[place] = page
                     self._keep(place, page)
             return found
 
@@ -118,23 +118,27 @@ class FieldStore:
     def _holds_data(self, place: Place) -> bool:
         return self.mosaic.has_data(place[0] * PAGE_PIXELS, place[1] * PAGE_PIXELS, PAGE_PIXELS, PAGE_PIXELS)
 
-    def _side(self, pages: int) -> int:
+    def _pixels(self, pages: int) -> int:
         """Working pixels along a block of `pages` pages and its halo."""
         return pages * PAGE_PIXELS + 2 * self.model.halo
 
     def _blocks(self, missing: Iterable[Place]) -> list[_Block]:
-        """Cover pages by blocks: a large one where it costs less than its missing pages one by one."""
-        side = self._per_block
-        groups: dict[Place, list[Place]] = {}
-        for p, q in missing:
-            groups.setdefault((p // side * side, q // side * side), []).append((p, q))
+        """Cover pages by strips along rows, else down columns: a strip spends less on its halo."""
+        left = sorted(missing)
         blocks: list[_Block] = []
-        for corner, places in sorted(groups.items()):
-            if len(places) * self._side(1) ** 2 >= self._side(side) ** 2:
-                blocks.append(_Block(*corner, side))
-            else:
-                blocks.extend(_Block(*place, 1) for place in places)
+        while left:
+            p, q = left[0]
+            block = _Block(p, q, 1, self._run_length(left, p, q, 0, 1))
+            if block.cols == 1:
+                block = _Block(p, q, self._run_length(left, p, q, 1, 0), 1)
+            blocks.append(block)
+            left = [place for place in left if place not in block.pages]
         return blocks
+
+    def _run_length(self, places: Sequence[Place], p: int, q: int, down: int, along: int) -> int:
+        """Count the pages from (p, q) on that follow each other among `places`, at most a strip."""
+        steps = takewhile(lambda k: (p + k * down, q + k * along) in places, range(self._strip))
+        return len(list(steps))
 
     def _prepared(self, blocks: Sequence[_Block]) -> Iterator[_Prepared]:
         """Yield blocks ready for the net, one read ahead."""
@@ -148,31 +152,30 @@ class FieldStore:
             yield prepared
 
     def _prepare(self, block: _Block) -> _Prepared:
-        side, halo = self._side(block.side), self.model.halo
+        halo, rows, cols = self.model.halo, self._pixels(block.rows), self._pixels(block.cols)
         row, col = block.p * PAGE_PIXELS - halo, block.q * PAGE_PIXELS - halo
-        colour, cover = self.mosaic.read_colour(row, col, side, side)
-        wider = side + 2 * RELIEF_REACH
-        height = self.mosaic.read_height(row - RELIEF_REACH, col - RELIEF_REACH, wider, wider)
+        colour, cover = self.mosaic.read_colour(row, col, rows, cols)
+        reach = RELIEF_REACH
+        height = self.mosaic.read_height(row - reach, col - reach, rows + 2 * reach, cols + 2 * reach)
         reliefs = (None, None) if height is None else relief(height)
         inputs = stack_inputs(colour, cover == COVER_VALID, *reliefs)
-        core = cover[halo : side - halo, halo : side - halo]
+        core = cover[halo : rows - halo, halo : cols - halo]
         cells = core.reshape(core.shape[0] // NET_STRIDE, NET_STRIDE, -1, NET_STRIDE).min(axis=(1, 3))
         return _Prepared(block, inputs[None], cells)
 
     def _run(self, prepared: _Prepared) -> Iterator[tuple[Place, Page]]:
-        """Run the net on a block and yield its pages that hold data."""
+        """Run the net on a block and yield its pages."""
         block = prepared.block
-        if block.side not in self._sessions:
-            side = self._side(block.side)
-            self._sessions[block.side] = self.model.session(side, side, self._threads)
-        (fields,) = self._sessions[block.side].run(["fields"], {"tiles": prepared.inputs})
+        shape = self._pixels(block.rows), self._pixels(block.cols)
+        if shape not in self._sessions:
+            self._sessions[shape] = self.model.session(*shape, self._threads)
+        (fields,) = self._sessions[shape].run(["fields"], {"tiles": prepared.inputs})
         margin = self.model.halo // NET_STRIDE
         for p, q in block.pages:
-            if self._holds_data((p, q)):
-                top, left = (p - block.p) * PAGE, (q - block.q) * PAGE
-                cover = prepared.cover[top : top + PAGE, left : left + PAGE]
-                part = fields[0, :, margin + top : margin + top + PAGE, margin + left : margin + left + PAGE]
-                yield (p, q), quantise(part, cover, self.model.calibration)
+            top, left = (p - block.p) * PAGE, (q - block.q) * PAGE
+            cover = prepared.cover[top : top + PAGE, left : left + PAGE]
+            part = fields[0, :, margin + top : margin + top + PAGE, margin + left : margin + left + PAGE]
+            yield (p, q), quantise(part, cover, self.model.calibration)
 
 
 def _blank() -> Page:
