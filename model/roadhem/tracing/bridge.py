@@ -77,7 +77,7 @@ def _landings(sheet: Sheet, arc: Arc, surface: float, longest_m: float, settings
     wide = settings.bridge_aside_m + settings.bridge_aside_share * ahead
     places, owner = [], []
     for k in range(len(ahead)):
-        lateral = np.arange(-wide[k], wide[k] + 1e-9, settings.bridge_grid_m)
+        lateral = np.arange(-wide[k], wide[k] + 1e-9, settings.scout_m)
         normal = np.array([-math.sin(heading[k]), math.cos(heading[k])])
         places.append(middle[k] + lateral[:, None] * normal)
         owner.append(np.full(len(lateral), k))

@@ -113,10 +113,7 @@ def _ways_out(sheet: Sheet, rows: Rows, settings: Settings) -> list[_Way]:
     """Lines leading away from the end of the rows, the best first."""
     end, here = rows[-1], rows[-1, [X, Y]]
     blunt = straight(between(rows, settings.corner_blur_m, settings.corner_leg_m, end[TRAVEL]))
-    angles = np.radians(np.arange(-160.0, 161.0, 8.0)) + math.atan2(blunt.direction[1], blunt.direction[0])
-    ring = np.stack([np.cos(angles), np.sin(angles)], axis=-1)
-    places = np.concatenate([here + radius * ring for radius in settings.corner_rings_m])
-    found = outward(lines_at(sheet, places, settings), here)
+    found = outward(lines_at(sheet, here + _rings(blunt.direction, settings), settings), here)
     away = found[:, [X, Y]] - here
     distance = np.hypot(*away.T)
     fits = (found[:, NEAR] >= settings.pace.present) & (distance >= settings.corner_blur_m)
@@ -135,6 +132,16 @@ def _ways_out(sheet: Sheet, rows: Rows, settings: Settings) -> list[_Way]:
         if corner is not None and (off := float(np.hypot(*(corner - here)))) <= settings.corner_reach_m:
             ways.append(_Way(row, leg, blur, row[NEAR] - 0.3 * off))
     return sorted(ways, key=lambda way: (-round(way.score, 6), *way.row[[X, Y]]))
+
+
+def _rings(direction: NDArray[np.float64], settings: Settings) -> NDArray[np.float64]:
+    """Places (n, 2) on the rings around an end, up to the largest turn either way."""
+    ahead = math.atan2(direction[1], direction[0])
+    places = []
+    for radius in settings.corner_rings_m:
+        angles = ahead + np.arange(-settings.corner_most, settings.corner_most, settings.scout_m / radius)
+        places.append(radius * np.stack([np.cos(angles), np.sin(angles)], axis=-1))
+    return np.concatenate(places)
 
 
 def _join(before: Rows, after: Rows, corner: NDArray[np.float64], blur_m: float) -> Rows | None:

@@ -5,12 +5,17 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from roadhem.tracing.follow import KIND, LEFT, RIGHT, SIGHT, SIGMA, TRAVEL, X, Y
+from roadhem.fields.layout import SEEN
+from roadhem.tracing.doubts import find_doubts
+from roadhem.tracing.follow import BRIDGE, FORM, HAND, KIND, LEFT, RIGHT, SIGHT, SIGMA, TRAVEL, X, Y
 from roadhem.tracing.result import Trace
 from roadhem.tracing.settings import Settings
 from roadhem.tracing.shape import measured, sharpen, smooth
+from roadhem.tracing.sheet import Sheet
 from roadhem.tracing.stretch import turned
 from roadhem.tracing.walk import Line
+
+BRIDGED, BY_HAND = SEEN.index("bridged"), SEEN.index("by_hand")
 
 
 def oriented(line: Line) -> Line:
@@ -40,18 +45,22 @@ def classes(probabilities: NDArray[np.float64], at_m: NDArray[np.float64], half_
     return chosen.astype(np.uint8)
 
 
-def finish(line: Line, settings: Settings) -> Trace:
+def finish(sheet: Sheet, line: Line, settings: Settings) -> Trace:
     """Return the trace of a followed line."""
     line = oriented(line)
     rows = np.concatenate([line.rows, line.rows[:1]]) if line.closed else line.rows
     rows = smooth(measured(sharpen(measured(rows), settings)), line.closed, settings)
-    at_m = measured(rows)[:, TRAVEL]
+    rows = measured(rows)
+    seen = classes(rows[:, SIGHT : SIGHT + 3], rows[:, TRAVEL], settings.attributes_m)
+    seen[rows[:, FORM] == BRIDGE] = BRIDGED
+    seen[rows[:, FORM] == HAND] = BY_HAND
     return Trace(
         points=rows[:, [X, Y]].copy(),
         sigma=rows[:, SIGMA].copy(),
-        kind=classes(rows[:, KIND : KIND + 3], at_m, settings.attributes_m),
-        seen=classes(rows[:, SIGHT : SIGHT + 3], at_m, settings.attributes_m),
+        kind=classes(rows[:, KIND : KIND + 3], rows[:, TRAVEL], settings.attributes_m),
+        seen=seen,
         closed=line.closed,
         start_reason=line.start_reason,
         end_reason=line.end_reason,
+        doubts=find_doubts(sheet, rows, seen == BRIDGED, settings),
     )

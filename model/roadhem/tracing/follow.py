@@ -4,8 +4,7 @@ from __future__ import annotations
 
 import math
 
-from numba import njit
-
+from roadhem.tracing.compiled import compiled
 from roadhem.tracing.ridge import settle
 from roadhem.tracing.sheet import (
     DX,
@@ -33,14 +32,14 @@ since the line was last seen, and what the point is: one of the forms."""
 
 COLUMNS = 19
 
-FOLLOWED, CORNER, BRIDGE, BY_HAND = range(4)
+FOLLOWED, CORNER, BRIDGE, HAND = range(4)
 """Forms of a point: found on the line, the vertex of a sharp corner, across a hidden stretch, given by a person."""
 
 SIDE_M = 0.6
 """How far left and right of the line the drive-over surface is read."""
 
 
-@njit(cache=True)
+@compiled
 def put_row(table, origin, row, x, y, tx, ty, values):  # type: ignore[no-untyped-def]
     """Write place, heading and the fields read there into a row; returns a code as `sample`."""
     code = sample(table, origin, x, y, values[0])
@@ -60,7 +59,7 @@ def put_row(table, origin, row, x, y, tx, ty, values):  # type: ignore[no-untype
     return VALID
 
 
-@njit(cache=True)
+@compiled
 def predict(x, y, tx, ty, bend, step):  # type: ignore[no-untyped-def]
     """Place and heading one step further along an arc of curvature `bend`."""
     half = 0.5 * bend * step
@@ -69,7 +68,7 @@ def predict(x, y, tx, ty, bend, step):  # type: ignore[no-untyped-def]
     return x + step * mx, y + step * my, mx * c - my * s, mx * s + my * c
 
 
-@njit(cache=True)
+@compiled
 def met(rows, n, pace):  # type: ignore[no-untyped-def]
     """Index of the row drawn long before on which the last of n rows lies, -1 if there is none."""
     here = rows[n - 1]
@@ -87,7 +86,7 @@ def met(rows, n, pace):  # type: ignore[no-untyped-def]
     return -1
 
 
-@njit(cache=True)
+@compiled
 def advance(table, origin, last, pace, values):  # type: ignore[no-untyped-def]
     """Take one step from a row: predict along the arc, settle on the line, shorten where that disagrees.
 
@@ -118,7 +117,7 @@ def advance(table, origin, last, pace, values):  # type: ignore[no-untyped-def]
     return code, x, y, tx, ty, step, seen
 
 
-@njit(cache=True)
+@compiled
 def follow(table, origin, rows, n, budget, pace, values):  # type: ignore[no-untyped-def]
     """Follow the line from the last row on.
 

@@ -5,9 +5,9 @@ from __future__ import annotations
 import math
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
 
+from roadhem.tracing.compiled import compiled
 from roadhem.tracing.follow import BESIDE, COLUMNS, LEFT, NEAR, RIGHT, TX, TY, X, Y, put_row
 from roadhem.tracing.result import Unplaced
 from roadhem.tracing.ridge import axis_at, buffer, lateral
@@ -48,7 +48,7 @@ def first_fix(
     return rows[np.argmax(np.where(fit, score, -np.inf))]
 
 
-@njit(cache=True)
+@compiled
 def solve(table, origin, x, y, upright, pace, values):  # type: ignore[no-untyped-def]
     """Where the line crosses a fixed line through (x, y), running north (upright) or east.
 
@@ -73,7 +73,7 @@ def solve(table, origin, x, y, upright, pace, values):  # type: ignore[no-untype
     return VALID, x, y, False
 
 
-@njit(cache=True)
+@compiled
 def crossings(table, origin, rows, lattice, pace, found, values):  # type: ignore[no-untyped-def]
     """Where a followed line crosses the lattice x = k * lattice, y = k * lattice at more than 45 degrees.
 

@@ -5,15 +5,18 @@ from __future__ import annotations
 import math
 
 import numpy as np
-from numba import njit
 
-from roadhem.tracing.sheet import COS2, DX, DY, MISSING, NEARNESS, SIN2, VALID, sample
+from roadhem.tracing.compiled import compiled
+from roadhem.tracing.sheet import COS2, DX, DY, GEOMETRY, MISSING, NEARNESS, SIN2, VALID, sample
 
 ITERATIONS = 8
 SETTLED_M = 1e-3
+"""A place that would move by less is on the line."""
+STEADY_M = 0.05
+"""A place that moved by less keeps its axis."""
 
 
-@njit(cache=True)
+@compiled
 def axis_at(table, origin, x, y, pace, values):  # type: ignore[no-untyped-def]
     """Mean axis over a star of five samples one profile step apart.
 
@@ -25,14 +28,14 @@ def axis_at(table, origin, x, y, pace, values):  # type: ignore[no-untyped-def]
     -------
     code : as `sample`. tx, ty : unit vector, of either sense. clear : 0..1, length of the mean double-angle vector.
     """
-    code = sample(table, origin, x, y, values[0])
+    code = sample(table, origin, x, y, values[0, :GEOMETRY])
     if code != VALID:
         return code, 1.0, 0.0, 0.0
     c, s, total = values[0, COS2], values[0, SIN2], 1.0
     for k in range(4):
         dx = pace.profile * ((k == 0) - (k == 1))
         dy = pace.profile * ((k == 2) - (k == 3))
-        code = sample(table, origin, x + dx, y + dy, values[1])
+        code = sample(table, origin, x + dx, y + dy, values[1, :GEOMETRY])
         if code == MISSING:
             return code, 1.0, 0.0, 0.0
         if code == VALID:
@@ -43,7 +46,7 @@ def axis_at(table, origin, x, y, pace, values):  # type: ignore[no-untyped-def]
     return VALID, math.cos(theta), math.sin(theta), math.hypot(c, s) / total
 
 
-@njit(cache=True)
+@compiled
 def lateral(table, origin, x, y, tx, ty, pace, values):  # type: ignore[no-untyped-def]
     """Distance from a place to the line, measured to the left of the axis (tx, ty).
 
@@ -62,7 +65,7 @@ def lateral(table, origin, x, y, tx, ty, pace, values):  # type: ignore[no-untyp
     total, weights = middle, 1.0
     for k in (-2, -1, 1, 2):
         d = k * pace.profile
-        code = sample(table, origin, x + d * nx, y + d * ny, values[1])
+        code = sample(table, origin, x + d * nx, y + d * ny, values[1, :GEOMETRY])
         if code == MISSING:
             return code, 0.0
         if code == VALID:
@@ -74,7 +77,7 @@ def lateral(table, origin, x, y, tx, ty, pace, values):  # type: ignore[no-untyp
     return VALID, total / weights
 
 
-@njit(cache=True)
+@compiled
 def settle(table, origin, x, y, hx, hy, pace, values):  # type: ignore[no-untyped-def]
     """Slide a place sideways onto the line.
 
@@ -86,9 +89,12 @@ def settle(table, origin, x, y, hx, hy, pace, values):  # type: ignore[no-untype
     -------
     code : as `sample`. x, y : the place on the line. tx, ty : its axis, along the heading. clear : as `axis_at`.
     """
-    tx, ty, clear = hx, hy, 0.0
+    tx, ty, clear, distance = hx, hy, 0.0, pace.reach
     for _ in range(ITERATIONS):
-        code, ax, ay, clear = axis_at(table, origin, x, y, pace, values)
+        if abs(distance) > STEADY_M:
+            code, ax, ay, clear = axis_at(table, origin, x, y, pace, values)
+        else:
+            code = sample(table, origin, x, y, values[0, :GEOMETRY])
         if code != VALID:
             return code, x, y, tx, ty, clear
         agree = ax * hx + ay * hy

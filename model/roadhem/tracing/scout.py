@@ -3,25 +3,25 @@
 from __future__ import annotations
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
 
+from roadhem.tracing.compiled import compiled
 from roadhem.tracing.follow import COLUMNS, LEFT, NEAR, RIGHT, TX, TY, X, Y, put_row
 from roadhem.tracing.ridge import buffer, settle
 from roadhem.tracing.settings import Settings
-from roadhem.tracing.sheet import MISSING, NEARNESS, VALID, Sheet, sample
+from roadhem.tracing.sheet import GEOMETRY, MISSING, NEARNESS, VALID, Sheet, sample
 from roadhem.tracing.stretch import Rows
 
 FAINT = 0.2
 """Nearness below which a place is not worth settling: no sure line within about a metre."""
 
 
-@njit(cache=True)
+@compiled
 def settle_all(table, origin, places, headings, pace, rows, values):  # type: ignore[no-untyped-def]
     """Settle every place and fill its row; NEAR is -1 where there is no line."""
     for k in range(len(places)):
         rows[k, NEAR] = -1.0
-        code = sample(table, origin, places[k, 0], places[k, 1], values[0])
+        code = sample(table, origin, places[k, 0], places[k, 1], values[0, :GEOMETRY])
         if code == MISSING:
             return code
         if code != VALID or values[0, NEARNESS] < FAINT:

@@ -64,8 +64,8 @@ class Settings:
     pace: Pace = PACE
 
     # Placing a click.
-    scout_m: float = 0.2
-    """Metres between the places tried around a click."""
+    scout_m: float = 0.3
+    """Metres between the places tried around a click, an end, or an arc continued."""
     scout_far: float = 0.35
     """What the whole radius costs, in nearness."""
     scout_other: float = 0.3
@@ -108,8 +108,6 @@ class Settings:
     """Longest stretch bridged ..."""
     bridge_ended_m: float = 3.0
     """... and where the line was seen to end."""
-    bridge_grid_m: float = 0.3
-    """Metres between the places tried across the arc."""
     bridge_memory_m: float = 9.0
     """Metres of line before the gap whose arc is continued."""
     bridge_drop_m: float = 0.8
@@ -142,6 +140,32 @@ class Settings:
     # Finishing.
     attributes_m: float = 1.0
     """Half window over which kind and sight are averaged; shorter pieces are absorbed."""
+
+    # Doubts.
+    neighbour_every_m: float = 1.2
+    neighbour_asides_m: tuple[float, ...] = (0.5, 0.9, -0.5, -0.9)
+    """Metres along the line between looks for other edges, and beside it."""
+    fork_angle: float = math.radians(10.0)
+    """An edge beside the line at a larger angle leaves it."""
+    doubt_sigma_m: float = 0.20
+    """Standard error from which a stretch counts as of low contrast."""
+    doubt_beside: float = 0.0
+    """By how much another line must be nearer than the edge to be a doubt."""
+    doubt_least_m: float = 2.0
+    """Metres such a stretch is long at the least."""
+
+    # Guided lines.
+    guide_near_m: float = 0.6
+    """A followed line that passes a guiding point within this is bent to it."""
+    guide_bend_m: float = 1.5
+    """Metres either side over which it is bent."""
+    guide_margin_m: float = 6.0
+    """Metres around two points in which the least-cost path between them may run."""
+    guide_floor: float = 0.02
+    """Cost of a metre on a sure edge, where a metre off any edge costs 1."""
+    guide_spread_m: float = 0.3
+    """Standard error of a path where no edge supports it."""
+
 
 
 SETTINGS = Settings()

@@ -5,9 +5,9 @@ from __future__ import annotations
 import math
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
 
+from roadhem.tracing.compiled import compiled
 from roadhem.tracing.corner import between, straight, turn_of, vertex_row
 from roadhem.tracing.follow import FOLLOWED, FORM, TRAVEL, TX, TY, X, Y
 from roadhem.tracing.settings import Settings
@@ -80,7 +80,7 @@ def _corner_at(rows: Rows, k: int, settings: Settings) -> Rows | None:
     return row
 
 
-@njit(cache=True)
+@compiled
 def _smooth(rows, half, bend_half, out):  # type: ignore[no-untyped-def]
     """Move each followed row sideways onto the parabola through its neighbours, and take its heading from it."""
     for k in range(len(rows)):

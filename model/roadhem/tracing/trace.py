@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from roadhem.errors import RoadhemError
 from roadhem.tracing.finish import finish
 from roadhem.tracing.follow import LIMIT, TRAVEL, X, Y
+from roadhem.tracing.guide import guided
 from roadhem.tracing.place import canonical, first_fix
 from roadhem.tracing.result import Trace, Unplaced
 from roadhem.tracing.settings import SETTINGS, Settings
@@ -61,9 +62,13 @@ def attempt(
     sheet = Sheet(view, places, limit_m + radius_m + 1.0)
     try:
         line = follow_seed(sheet, places[0], radius_m, limit_m, settings)
+        if isinstance(line, Unplaced):
+            return line
+        if len(places) > 1:
+            line = guided(sheet, line, places[0], places[1:], limit_m, settings)
+        return finish(sheet, line, settings)
     except Absent as absent:
         return Missing(frozenset([absent.page]))
-    return line if isinstance(line, Unplaced) else finish(line, settings)
 
 
 def follow_seed(
