@@ -26,10 +26,10 @@ def measured(reference: list[LineString], lines: list[LineString], **options: ob
 def write(path: Path, layer: str, shapes: list, crs: str = "EPSG:25832", **columns: list) -> Path:
     """Append a layer to a GeoPackage."""
     kinds = {shape.geom_type for shape in shapes}
+    values = [np.array(column, dtype=object) for column in columns.values()]
     pyogrio.raw.write(
-        str(path), shapely.to_wkb(np.array(shapes, dtype=object)),
-        [np.array(values, dtype=object) for values in columns.values()], list(columns), layer=layer, driver="GPKG", crs=crs, append=path.exists(),
-        geometry_type=kinds.pop() if len(kinds) == 1 else "Unknown",
+        str(path), shapely.to_wkb(np.array(shapes, dtype=object)), values, list(columns), layer=layer, driver="GPKG",
+        crs=crs, append=path.exists(), geometry_type=kinds.pop() if len(kinds) == 1 else "Unknown",
     )  # fmt: skip
     return path
 
