@@ -13,6 +13,7 @@ from shapely.geometry import LineString, MultiPolygon, Polygon
 Points = NDArray[np.float64]
 Offset = float | Callable[[Points], Points]
 
+CLOSEST = 0.05  # metres between stations of an offset curve; nearer ones could fold back on each other
 CHORD_ERROR = 0.003  # how far a chord of an axis may lie off its arc, metres
 
 
@@ -81,10 +82,12 @@ class Alignment:
 
         `offset` may be a function of the stations; `step` adds stations so that it is followed closely.
         """
-        first, last = np.searchsorted(self.s, (s0 + 1e-6, s1 - 1e-6))
+        first, last = np.searchsorted(self.s, (s0 + CLOSEST, s1 - CLOSEST))
         s = np.concatenate([[s0], self.s[first:last], [s1]])
         if step:
-            s = np.union1d(s, np.arange(s0 + step, s1 - 1e-3, step))
+            more = np.arange(s0 + step, s1 - 0.5 * step, step)
+            k = np.clip(np.searchsorted(s, more), 1, len(s) - 1)
+            s = np.union1d(s, more[np.minimum(more - s[k - 1], s[k] - more) > 0.3 * step])
         k = self._segment(s)
         after = self.direction[k]
         before = self.direction[np.where((s - self.s[k] < 1e-9) & (k > 0), k - 1, k)]

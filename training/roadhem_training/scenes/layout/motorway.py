@@ -11,9 +11,9 @@ from numpy.typing import NDArray
 from shapely.geometry import LineString, Polygon, box
 
 from roadhem_training.scenes.layout import odds
-from roadhem_training.scenes.layout.alignment import Alignment, from_curvature
+from roadhem_training.scenes.layout.alignment import Alignment, Offset, from_curvature
 from roadhem_training.scenes.layout.country import _curb, _inside, through
-from roadhem_training.scenes.layout.junctions import closing, junctions
+from roadhem_training.scenes.layout.junctions import junctions
 from roadhem_training.scenes.layout.markings import hatching
 from roadhem_training.scenes.layout.odds import between, chance, pick
 from roadhem_training.scenes.layout.plan import Edging, Junction, Part, Plan, Road
@@ -32,7 +32,7 @@ RAMP_WIDTH = (4.5, 7.0)
 RAMP_RADIUS = (45.0, 160.0)
 RAMP_ODDS = 0.8  # share of carriageways with a ramp in reach of the frame
 PART_ANGLE = 0.35  # radians between a ramp and the carriageway where it is on its own
-GORE_RADIUS = (0.2, 1.0)
+NOSE = (0.5, 3.0)  # width of the blunt end between carriageway and ramp
 BESIDE = 0.65  # share of places with a common road along the motorway
 BESIDE_GAP = (8.0, 25.0)
 INNER_CURB = 0.35
@@ -110,12 +110,18 @@ def _ramp(rng: Rng, plan: Plan, road: Road, window: Polygon) -> None:
                 left=flush_edging(rng), material=road.material, tone=road.tone, oneway=True,
                 shoulders=(0.6, 0.4))  # fmt: skip
     plan.roads.append(ramp)
-    both = shapely.union(road.area, ramp.area).intersection(window)
-    for piece in closing(both, between(rng, GORE_RADIUS)):
-        plan.parts.append(Part(piece, ramp.left, road.material, road.tone, "gore"))
-    nose = road.axis.strip(max(0, gore - 40), min(road.axis.length, gore + 40), -road.half - 0.2, -road.half + 2.5)
-    for piece in polygons(nose.intersection(ramp.area)):
-        plan.paints += hatching(piece, road.axis.heading(gore))
+    _gore(rng, plan, road, ramp.left, lambda s: offset(s) + 0.5 * width, gore, sign * radius)
+
+
+def _gore(
+    rng: Rng, plan: Plan, road: Road, edging: Edging, ramp_edge: Offset, gore: float, radius: float
+) -> None:
+    """The paved and hatched wedge between carriageway and ramp, up to its blunt nose."""
+    nose = gore + math.copysign(math.sqrt(2 * abs(radius) * between(rng, NOSE)), radius)
+    s0, s1 = sorted((gore, nose))
+    wedge = road.axis.strip(s0, s1, lambda s: ramp_edge(s) - 0.4, 0.4 - road.half, step=1.0)
+    plan.parts.append(Part(wedge, edging, road.material, road.tone, "gore"))
+    plan.paints += hatching(wedge.buffer(-0.2), road.axis.heading(gore))
 
 
 def _middle(rng: Rng, plan: Plan, axis: Alignment, gap: float) -> None:

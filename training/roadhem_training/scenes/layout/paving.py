@@ -160,6 +160,6 @@ def _normals(points: NDArray[np.float64]) -> NDArray[np.float64]:
 
 def _wander(rng: Rng, n: int) -> NDArray[np.float64]:
     """A random curve of n values with a spread of about 0.5: rough and smooth together."""
-    rough = rng.normal(0, 0.35, n)
+    rough = rng.normal(0, 0.12, n)
     smooth = np.interp(np.arange(n), np.linspace(0, n - 1, max(2, n // 9)), rng.normal(0, 0.5, max(2, n // 9)))
     return rough + smooth
