@@ -88,7 +88,8 @@ def _crown(image, hidden, clumps, grain, bounds, numbers, colour, sky):  # type:
                 continue
             clump = clumps[r, c]
             alpha = min(max((1 - np.sqrt(square)) * radius * pixel * 2.5 + 0.5 + 0.8 * clump, 0.0), 1.0)
-            alpha *= min(max(0.5 + 2.6 * (density - 0.55) + (1 - density) * (1.6 * clump + 0.7 * grain[r, c]), 0.0), 1.0)
+            leaf = (1 - density) * (1.6 * clump + 0.7 * grain[r, c])
+            alpha *= min(max(0.5 + 2.6 * (density - 0.55) + leaf, 0.0), 1.0)
             if alpha <= 0:
                 continue
             rr = min(max(int(r + ahead * sun_y + 0.5), 0), rows - 1)

@@ -22,14 +22,13 @@ CHANCES = {
     "jpeg": 0.65,
     "coarser": 0.55,
     "tracks": 0.7,
-    "patched": 0.55,
     "cracked": 0.5,
     "sealed": 0.25,
     "skids": 0.25,
     "gullies": 0.6,
-    "dusty": 0.22,
-    "muddy": 0.12,
-    "overgrown": 0.30,
+    "dusty": 0.15,
+    "muddy": 0.08,
+    "overgrown": 0.22,
     "leafy": 0.06,
     "gravelly": 0.08,
     "snowy": 0.03,
@@ -44,8 +43,9 @@ CHANCES = {
 }
 """How often each thing happens, 0..1.
 
-intensity: the strength of LiDAR returns instead of a photograph. height_with_...: what the ground filter leaves in;
-height_holes: what it takes out leaves holes rather than filled ground; height_scattered: cells take the nearest return.
+intensity: the strength of LiDAR returns instead of a photograph. height_with_...: what the ground filter leaves
+in; height_holes: what it takes out leaves holes rather than filled ground; height_scattered: cells take the nearest
+return.
 """
 
 

@@ -8,9 +8,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roadhem_training.scenes.coverage import Frame, Patch, cover_area
-from roadhem_training.scenes.materials import JOINTLESS, Material, Rows, linear, material_of, pick_colour
+from roadhem_training.scenes.materials import Material, linear, material_of, pick_colour
 from roadhem_training.scenes.noise import DRIFT_M, GRAIN_M, PATCH_M, PEBBLE_M, SPOT_M, Noise
-from roadhem_training.scenes.world import Cover, World
+from roadhem_training.scenes.world import World
 
 RAGGED = 0.5
 """How much of a soft edge's width its outline wanders."""
@@ -43,8 +43,8 @@ def lay_ground(
         if cover.material not in means or rng.random() < OWN_COLOUR:
             means[cover.material] = pick_colour(material, rng, 0.0)
         colour = means[cover.material] * np.float32((1 + 0.28 * cover.tone) ** 2.2)
-        rows = None if cover.material in JOINTLESS else material.rows
-        lay(image, _soften(patch, cover.edge_softness, noise), material, colour, rows, cover.direction, frame, noise, rng)
+        soft = _soften(patch, cover.edge_softness, noise)
+        lay(image, soft, material, colour, cover.direction, frame, noise, rng)
     return image, relief
 
 
@@ -64,7 +64,6 @@ def lay(
     patch: Patch,
     material: Material,
     colour: NDArray[np.float32],
-    rows: Rows | None,
     direction: float,
     frame: Frame,
     noise: Noise,
@@ -86,18 +85,19 @@ def lay(
         noise.at(PATCH_M, which)[window],
         noise.at(DRIFT_M, which)[window],
         2 * np.array([material.grain, material.pebble, material.spot, material.patch, material.drift], np.float32),
-        row_numbers(rows, direction, rng),
+        _row_numbers(material, direction, rng),
         np.array([origin[0], origin[1], frame.pixel], np.float32),
     )
 
 
-def row_numbers(rows: Rows | None, direction: float, rng: np.random.Generator) -> NDArray[np.float32]:
-    """Flatten the laying pattern for the compiled loop; length 0 says there is none."""
+def _row_numbers(material: Material, direction: float, rng: np.random.Generator) -> NDArray[np.float32]:
+    """Flatten the laying pattern for the compiled loop; a length of 0 says there is none."""
+    rows = material.rows
     if rows is None:
         return np.zeros(8, np.float32)
     scale = rng.uniform(0.85, 1.2)
-    turn = (np.cos(direction), np.sin(direction))
     size = (rows.length * scale, rows.width * scale)
+    turn = (np.cos(direction), np.sin(direction))
     return np.array([*size, rows.joint, rows.joint_tone, rows.bond, 2 * rows.vary, *turn], np.float32)
 
 
@@ -118,8 +118,9 @@ def _lay(image, cover, first, second, share, grain, pebble, spot, patch, drift, 
             alpha = cover[r, c]
             if alpha <= 0:
                 continue
-            mottle = pebble[r, c] * np.float32(0.25) + spot[r, c] * np.float32(0.5) + patch[r, c] * np.float32(0.5)
-            mix = min(max(share * np.float32(1.6) + np.float32(0.35) * mottle * min(share * 3, np.float32(1)), np.float32(0)), np.float32(1))
+            mottle = pebble[r, c] * np.float32(0.25) + (spot[r, c] + patch[r, c]) * np.float32(0.5)
+            mix = share * np.float32(1.6) + np.float32(0.35) * mottle * min(share * 3, np.float32(1))
+            mix = min(max(mix, np.float32(0)), np.float32(1))
             tone = (
                 1
                 + weights[0] * grain[r, c]

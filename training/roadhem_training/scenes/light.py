@@ -134,9 +134,9 @@ def shade_curbs(
     dark, sky : (rows, cols) share of direct light taken and of sky light left; changed in place.
     """
     heights = np.array([edge.height for edge in world.edges] + [0.0], np.float32)
-    face = rng.uniform(0.0, 0.05)
-    dirt = rng.normal(0.08, 0.10)
-    numbers = np.array([*flight.to_sun, flight.shadow_per_metre, face, dirt, rng.uniform(0.05, 0.2), pixel], np.float32)
+    face, dirt, dirt_reach = rng.uniform(0.0, 0.05), rng.normal(0.08, 0.10), rng.uniform(0.05, 0.2)
+    sun = (*flight.to_sun, flight.shadow_per_metre)
+    numbers = np.array([*sun, face, dirt, dirt_reach, pixel], np.float32)
     nearest = distance.nearest
     _shade_curbs(dark, sky, distance.sdf, nearest.dx, nearest.dy, nearest.theta, nearest.line_index, heights, numbers)
 

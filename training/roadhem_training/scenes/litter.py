@@ -23,7 +23,7 @@ LITTER: dict[str, tuple[str, tuple[float, float], tuple[float, float], tuple[flo
 }
 """Event: material, reach onto the road, reach behind the edge (metres), opacity."""
 
-SHARE = 0.45
+SHARE = 0.35
 """Share of a scene's edges that its kind of litter lies on."""
 
 

@@ -60,11 +60,15 @@ MATERIALS: dict[str, Material] = {
     ),
     "concrete": Material(
         ((168, 164, 156), (186, 181, 171), (201, 196, 186)),
-        (150, 143, 132), 0.08, 0.025, 0.012, 0.012, 0.018, 0.025, Rows(4.5, 3.6, 0.03, 0.72, 0.0, 0.012),
+        (150, 143, 132), 0.08, 0.025, 0.012, 0.012, 0.018, 0.025,
     ),
     "curb": Material(
         ((122, 119, 115), (136, 133, 128), (128, 122, 116)),
         (112, 106, 98), 0.2, 0.06, 0.05, 0.03, 0.04, 0.04,
+    ),
+    "stone": Material(
+        ((150, 146, 140), (168, 162, 153), (132, 128, 124)),
+        (128, 120, 110), 0.2, 0.05, 0.04, 0.03, 0.03, 0.03,
     ),
     "slabs": Material(
         ((158, 153, 147), (178, 173, 166), (150, 140, 132), (190, 180, 168)),
@@ -132,23 +136,12 @@ MATERIALS: dict[str, Material] = {
     "rubber": Material(((150, 76, 62), (76, 112, 84)), (120, 90, 76), 0.1, 0.03, 0.02, 0.02, 0.03, 0.03),
 }
 
-ALIASES = {
-    "slab": "slabs", "concrete_slabs": "concrete", "cobbles": "setts", "dirt": "soil", "meadow": "grass",
-    "lawn": "mown", "crop": "field", "fresh_grass": "grass", "grass_dry": "dry_grass", "grass_mown": "mown",
-    "brick": "pavers", "mulch": "planting", "bare_soil": "soil", "granite": "concrete", "stone": "concrete",
-    "dust": "sand", "leaf_litter": "leaves",
-}
-
-JOINTLESS = ("granite", "stone")
-"""Look like another material, cut too small for its joints."""
-
 
 def material_of(name: str) -> Material:
     """Return the material of a name; KeyError with the known names if there is none."""
-    known = ALIASES.get(name, name)
-    if known not in MATERIALS:
-        raise KeyError(f"no material {name!r}; known are {', '.join(sorted({*MATERIALS, *ALIASES}))}")
-    return MATERIALS[known]
+    if name not in MATERIALS:
+        raise KeyError(f"no material {name!r}; known are {', '.join(sorted(MATERIALS))}")
+    return MATERIALS[name]
 
 
 def linear(colour: Colour | NDArray[np.float32]) -> NDArray[np.float32]:

@@ -31,8 +31,8 @@ class Noise:
         """Return the (rows, cols) field of a grain in metres; `which` 0..7 picks among different ones."""
         key = (grain, which)
         if key not in self._known:
-            turned = which // DRAWN
-            self._known[key] = cv2.flip(self.at(grain, which % DRAWN), FLIPS[turned - 1]) if turned else self._draw(grain, which)
+            turned, drawn = divmod(which, DRAWN)
+            self._known[key] = cv2.flip(self.at(grain, drawn), FLIPS[turned - 1]) if turned else self._draw(*key)
         return self._known[key]
 
     def _draw(self, grain: float, which: int) -> NDArray[np.float32]:

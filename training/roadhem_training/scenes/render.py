@@ -119,8 +119,8 @@ def _surface(
 ) -> tuple[NDArray[np.float32], NDArray[np.float32]]:
     """Reflectance of the ground (covers, wear, paint, more wear, litter) and the relief of its covers."""
     image, relief = lay_ground(world, frame, noise, rng)
-    wear_surface(image, world, distance, frame, flight, noise, rng)
+    wear_surface(image, distance, flight, noise, rng)
     paint_markings(image, world.paints, frame, noise, rng)
-    wear_paint(image, world, distance, frame, flight, rng)
+    wear_paint(image, distance, frame, flight, rng)
     litter_edges(image, world, distance, flight, noise, rng)
     return image, relief

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 import shapely
@@ -134,7 +135,7 @@ def _runs(states: NDArray[np.int64], shortest: float) -> list[tuple[int, int, in
     """Runs of equal state as (first, end, state); those shorter than `shortest` join the one before."""
     starts = [0, *(np.flatnonzero(np.diff(states)) + 1).tolist(), len(states)]
     runs: list[tuple[int, int, int]] = []
-    for first, last in zip(starts[:-1], starts[1:], strict=True):
+    for first, last in pairwise(starts):
         state = int(states[first])
         if runs and (last - first < shortest or runs[-1][2] == state):
             runs[-1] = (runs[-1][0], last, runs[-1][2])

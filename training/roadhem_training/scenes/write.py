@@ -91,11 +91,14 @@ def _write_raster(
         "predictor": 3 if bands.dtype == np.float32 else 2, "interleave": "pixel",
     }  # fmt: skip
     try:
-        with whole_file(target) as part, rasterio.Env(GDAL_TIFF_INTERNAL_MASK=True):
-            with rasterio.open(part, "w", **profile) as raster:
-                raster.write(bands)
-                if valid is not None and not valid.all():
-                    raster.write_mask(valid)
+        with (
+            whole_file(target) as part,
+            rasterio.Env(GDAL_TIFF_INTERNAL_MASK=True),
+            rasterio.open(part, "w", **profile) as raster,
+        ):
+            raster.write(bands)
+            if valid is not None and not valid.all():
+                raster.write_mask(valid)
     except (rasterio.errors.RasterioError, OSError) as error:
         raise RoadhemError(f"{target} could not be written, is the disk full? ({error})") from error
 
