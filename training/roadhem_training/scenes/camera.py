@@ -113,7 +113,7 @@ def sharpen(image: NDArray[np.float32], rng: np.random.Generator) -> NDArray[np.
 
 def noise_for(image: NDArray[np.float32], rng: np.random.Generator) -> NDArray[np.float32]:
     """Sensor noise: grows with the signal, mostly the same in all bands, sometimes smeared by resampling."""
-    level = float(np.exp(rng.uniform(np.log(0.4), np.log(5.0))))
+    level = float(np.exp(rng.uniform(np.log(0.4), np.log(4.0))))
     rows, cols = image.shape[:2]
     drawn = rng.standard_normal((rows + 3 * APART_PX, cols), np.float32)
     colour = np.float32(rng.uniform(0.1, 0.5))
