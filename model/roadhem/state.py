@@ -67,7 +67,7 @@ def shipped_model() -> Path:
     """
     models = [model for model in shelf() if model.shipped]
     if not models:
-        raise BadInput(f"no model is shipped in {SHIPPED}: reinstall roadhem, or name a model folder with --model")
+        raise BadInput(f"No model is shipped in {SHIPPED}; reinstall roadhem, or name a model folder with --model")
     return models[0].folder
 
 
@@ -90,8 +90,8 @@ def find_model(name: str | None) -> Path:
         return folder
     known = ", ".join(model.name for model in models) or "none"
     if path.is_file() or path.is_dir():
-        raise BadInput(f"{name} is not a Roadhem model: a model folder holds {WEIGHTS} and {CARD}")
-    raise BadInput(f"there is no model '{name}', neither on the shelf ({known}) nor as a folder")
+        raise BadInput(f"{name} is not a Roadhem model; a model folder holds {WEIGHTS} and {CARD}")
+    raise BadInput(f"There is no model '{name}', neither on the shelf ({known}) nor as a folder")
 
 
 def _cards(folder: Path) -> list[Path]:
@@ -103,5 +103,5 @@ def _shelved(card_path: Path, shipped: bool) -> ShelvedModel:
         card = json.loads(card_path.read_text(encoding="utf-8"))
         name = str(card["name"])
     except (ValueError, KeyError, TypeError) as error:
-        raise BadInput(f"{card_path} is not a model card: restore it or remove its folder") from error
+        raise BadInput(f"{card_path} is not a model card; restore it or remove its folder") from error
     return ShelvedModel(name, card_path.parent, shipped, card)

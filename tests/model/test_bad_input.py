@@ -367,8 +367,8 @@ def test_workers(place: Path, run: Run, workers: str) -> None:
 
 def test_unknown_verb(place: Path, run: Run) -> None:
     """Should name the nearest verb."""
-    refused(run, place, ["trase"], "trase", "'trace'")
-    refused(run, place, ["messure", "x"], "'measure'")
+    refused(run, place, ["trase"], "trase", "is trace")
+    refused(run, place, ["messure", "x"], "is measure")
 
 
 def test_usage_errors(place: Path, run: Run) -> None:

@@ -8,6 +8,7 @@ named cannot be used, 1 when the work found faults or went on without some input
 from __future__ import annotations
 
 import difflib
+import errno
 import os
 import sys
 import warnings
@@ -31,6 +32,12 @@ VERBS = {
     "shelf": "List the models and show what each one is.",
 }
 """Verbs of this package with their line in the overview; verb V is the command V in roadhem.cli.V."""
+
+WAYS_OUT = {
+    **dict.fromkeys((errno.ENOSPC, errno.EDQUOT, errno.EFBIG), "free space or name another place"),
+    **dict.fromkeys((errno.EACCES, errno.EPERM, errno.EROFS), "change the permissions or name another place"),
+}
+"""What to do about a complaint of the operating system."""
 
 ENTRY_POINTS = "roadhem.commands"
 
@@ -59,7 +66,7 @@ class Verbs(click.Group):
         if args and self.get_command(ctx, args[0]) is None and not args[0].startswith("-"):
             verbs = self.list_commands(ctx)
             near = difflib.get_close_matches(args[0].lower(), verbs, 1, 0.0)
-            raise click.UsageError(f"there is no verb '{args[0]}', the nearest is '{near[0]}'", ctx)
+            raise click.UsageError(f"There is no verb {args[0]}, the nearest is {near[0]}", ctx)
         return super().resolve_command(ctx, args)
 
     def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
@@ -101,7 +108,7 @@ def _tell(error: BaseException) -> int:
     if isinstance(error, click.exceptions.Exit):
         return error.exit_code
     if isinstance(error, KeyboardInterrupt | click.Abort):
-        return _say("stopped before it was done; what was there before is unchanged", FAULTS)
+        return _say("Stopped before it was done; what was there before is unchanged", FAULTS)
     if isinstance(error, BrokenPipeError):
         return FAULTS
     if isinstance(error, click.ClickException):
@@ -111,7 +118,7 @@ def _tell(error: BaseException) -> int:
     if isinstance(error, OSError) and error.strerror:
         return _say(_system(error), BAD_INPUT)
     if isinstance(error, MemoryError):
-        return _say("memory ran out: close other programs or use fewer --workers", FAULTS)
+        return _say("Memory ran out; close other programs or use fewer --workers", FAULTS)
     return _say(_unforeseen(error), FAULTS)
 
 
@@ -124,14 +131,18 @@ def _say(sentence: str, status: int) -> int:
 def _usage(error: click.ClickException) -> str:
     context = getattr(error, "ctx", None)
     command = context.command_path if context is not None else "roadhem"
-    text = error.format_message().strip().rstrip(".")
-    return f"{text[:1].lower()}{text[1:]}: see {command} --help"
+    if isinstance(error, click.NoSuchOption):
+        nearest = f", the nearest is {error.possibilities[0]}" if error.possibilities else ""
+        text = f"There is no option {error.option_name}{nearest}"
+    else:
+        text = error.format_message().strip().rstrip(".")
+    return f"{text}; see {command} --help"
 
 
 def _system(error: OSError) -> str:
     where = f"{error.filename}: " if error.filename else ""
     reason = (error.strerror or "").lower()
-    return f"{where}{reason}: free space, change the permissions or name another place"
+    return f"{where}{reason}; {WAYS_OUT.get(error.errno or 0, 'name another place')}"
 
 
 def _unforeseen(error: BaseException) -> str:
@@ -146,7 +157,7 @@ def _unforeseen(error: BaseException) -> str:
         Path(log).write_text(f"roadhem {__version__}\n{' '.join(sys.argv)}\n{text}", encoding="utf-8")
     except OSError:
         log = "nowhere, for its folder cannot be written"
-    return f"something went wrong that should not ({type(error).__name__}): please report it with the log in {log}"
+    return f"Something went wrong that should not ({type(error).__name__}); please report it with the log in {log}"
 
 
 def _leave(status: int) -> NoReturn:

@@ -11,7 +11,7 @@ from typing import Any, TextIO
 import numpy as np
 from numpy.typing import NDArray
 
-from roadhem.errors import BadInput
+from roadhem.errors import BadInput, RoadhemError
 from roadhem.tracing.result import Doubt, Trace, Unplaced
 
 
@@ -59,9 +59,14 @@ class Journal:
         self.path.unlink(missing_ok=True)
 
     def _write(self, entries: list[dict[str, Any]]) -> None:
-        self._stream.write("".join(json.dumps(entry) + "\n" for entry in entries))
-        self._stream.flush()
-        os.fsync(self._stream.fileno())
+        try:
+            self._stream.write("".join(json.dumps(entry) + "\n" for entry in entries))
+            self._stream.flush()
+            os.fsync(self._stream.fileno())
+        except OSError as error:
+            raise RoadhemError(
+                f"{self.path} could not be written ({error.strerror}); free space and --resume"
+            ) from error
 
     def _read(self, job: str) -> int:
         """Take over whole lines; return up to which byte they go (a last line cut short is dropped)."""
@@ -74,14 +79,14 @@ class Journal:
             header, *entries = [json.loads(line) for line in lines]
             if header["job"] != job:
                 raise BadInput(
-                    f"{self.path} belongs to another run (other tiles, seeds, model or version): "
+                    f"{self.path} belongs to another run (other tiles, seeds, model or version); "
                     "delete it or run without --resume"
                 )
             self.done = {entry["seed"]: unpacked(entry) for entry in entries}
         except (ValueError, KeyError, TypeError) as error:
             if isinstance(error, BadInput):
                 raise
-            raise BadInput(f"{self.path} is damaged: delete it or run without --resume") from error
+            raise BadInput(f"{self.path} is damaged; delete it or run without --resume") from error
         return len(good)
 
 

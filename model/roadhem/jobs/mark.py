@@ -164,7 +164,7 @@ def _sure(trace: Trace, place: NDArray[np.float64]) -> bool:
 def _pages(session: Session) -> list[tuple[int, int]]:
     minx, miny, maxx, maxy = session.bounds_m
     if not np.isfinite([minx, miny, maxx, maxy]).all():
-        raise BadInput("the tiles have no extent: check their transforms")
+        raise BadInput("The tiles have no extent; check their transforms")
     (top, left), (bottom, right) = page_of(minx, maxy), page_of(maxx, miny)
     pages = [(p, q) for p in range(top, bottom + 1) for q in range(left, right + 1)]
     covered = [(p, q) for p, q in pages if session.covers((q + 0.5) * PAGE_M, -(p + 0.5) * PAGE_M, PAGE_M / 2)]

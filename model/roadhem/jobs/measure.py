@@ -52,7 +52,7 @@ def measure_truth(job: MeasureJob) -> LineMeasures:
     drawn = _lines(to_crs(truth, crs, job.allow_ballpark), truth)
     unscored = np.isin(_visible(truth), UNSCORED)
     if not (shapely.length(drawn[~unscored]) > 0).any():
-        raise BadInput(f"{job.truth} holds no line that can be scored: name a layer with drawn edges")
+        raise BadInput(f"{job.truth} holds no line that can be scored; name a layer with drawn edges")
     areas = _areas(job, crs) if job.areas is not None else None
     scale = Ground(crs).metres_per_unit(shapely.total_bounds(drawn))
     return measure_lines(
@@ -67,17 +67,17 @@ def measure_truth(job: MeasureJob) -> LineMeasures:
 def _projected(truth: Layer, lines: Layer) -> pyproj.CRS:
     for layer in (truth, lines):
         if layer.crs is None:
-            raise BadInput(f"{layer.source} has no CRS: set the one its coordinates are in before using it")
+            raise BadInput(f"{layer.source} has no CRS; set the one its coordinates are in before using it")
     for layer in (truth, lines):
         if layer.crs is not None and layer.crs.is_projected:
             return layer.crs
-    raise BadInput(f"{lines.source} and {truth.source} are both in degrees: bring one to a CRS in metres or feet")
+    raise BadInput(f"{lines.source} and {truth.source} are both in degrees; bring one to a CRS in metres or feet")
 
 
 def _lines(geometry: NDArray[Any], layer: Layer) -> NDArray[Any]:
     known = geometry[~(shapely.is_missing(geometry) | shapely.is_empty(geometry))]
     if (shapely.get_dimensions(known) != 1).any():
-        raise BadInput(f"{layer.source} holds something else than lines: name a layer of lines")
+        raise BadInput(f"{layer.source} holds something else than lines; name a layer of lines")
     return geometry
 
 
@@ -89,7 +89,7 @@ def _areas(job: MeasureJob, crs: pyproj.CRS) -> Any:
     layer = read_layer(str(job.areas), "areas")
     union = shapely.union_all(shapely.make_valid(to_crs(layer, crs, job.allow_ballpark)))
     if union.is_empty or union.area <= 0:
-        raise BadInput(f"{job.areas} holds no polygon: name a layer of areas")
+        raise BadInput(f"{job.areas} holds no polygon; name a layer of areas")
     return union
 
 

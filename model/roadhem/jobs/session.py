@@ -79,7 +79,7 @@ class Session(Protocol):
         """Return how many working pixels the net has looked at so far."""
 
 
-TOO_SHORT = "the edge beside it is too short to be a line"
+TOO_SHORT = "The edge beside the seed is too short to be a line."
 
 Opener = Callable[[Inputs], Session]
 

@@ -96,7 +96,7 @@ def trace_tiles(job: TraceJob, opener: Opener, progress: Progress) -> TraceSumma
 def _check_apart(job: TraceJob) -> None:
     read = [*job.inputs.tiles, *job.inputs.height, Path(split_source(job.seeds)[0])]
     if job.out.exists() and any(path.exists() and path.samefile(job.out) for path in read):
-        raise BadInput(f"{job.out} is read by this run: name another file to write")
+        raise BadInput(f"{job.out} is read by this run; name another file to write")
 
 
 @dataclass

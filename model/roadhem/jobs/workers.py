@@ -38,7 +38,7 @@ class Batch(NamedTuple):
 CHUNK = 8
 """Seeds handed out at once: neighbours, so that they share pages of fields."""
 
-OUTSIDE = "the seed lies outside all tiles"
+OUTSIDE = "The seed lies outside all tiles."
 
 
 def trace_here(session: Session, tasks: Sequence[Task]) -> Iterator[Batch]:
@@ -66,7 +66,7 @@ def trace_apart(inputs: Inputs, opener: Opener, tasks: Sequence[Task], workers: 
                 yield future.result()
     except BrokenProcessPool as error:
         raise RoadhemError(
-            "a worker process was lost, maybe for want of memory: run again with --resume and fewer --workers"
+            "A worker process was lost, maybe for want of memory; run again with --resume and fewer --workers"
         ) from error
     finally:
         pool.shutdown(wait=not waiting, cancel_futures=True)

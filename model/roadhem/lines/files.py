@@ -19,13 +19,13 @@ def check_target(path: Path, suffixes: tuple[str, ...] = ()) -> None:
     """
     folder = path.parent
     if suffixes and path.suffix.lower() not in suffixes:
-        raise BadInput(f"cannot write {path}: name a file that ends in {' or '.join(suffixes)}")
+        raise BadInput(f"{path} has a name that says no format; name a file that ends in {' or '.join(suffixes)}")
     if not folder.is_dir():
-        raise BadInput(f"the output folder {folder} does not exist: make it first or name another")
+        raise BadInput(f"The output folder {folder} does not exist; make it first or name another")
     if path.is_dir():
-        raise BadInput(f"cannot write {path}: it is a folder, name a file in it")
+        raise BadInput(f"{path} is a folder; name a file in it")
     if not os.access(folder, os.W_OK):
-        raise BadInput(f"the output folder {folder} is not writable: name another or change its permissions")
+        raise BadInput(f"The output folder {folder} is not writable; name another or change its permissions")
 
 
 @contextmanager

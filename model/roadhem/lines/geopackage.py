@@ -36,7 +36,9 @@ def write_geopackage(target: Path, tables: Iterable[Table], crs: pyproj.CRS) -> 
                 _write_layer(part, table, named, append=number > 0)
             except (DataSourceError, DataLayerError, FeatureError, GeometryError, RuntimeError) as error:
                 detail = " ".join(str(error).split()).rstrip(".")
-                raise RoadhemError(f"{target} could not be written, is the disk full? ({detail})") from error
+                raise RoadhemError(
+                    f"{target} could not be written ({detail}); free space or name another place"
+                ) from error
 
 
 def _write_layer(path: Path, table: Table, crs: str, append: bool) -> None:

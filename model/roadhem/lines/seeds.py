@@ -16,8 +16,8 @@ from roadhem.errors import BadInput
 from roadhem.lines.vectors import Layer, read_layer, to_crs
 
 ROLE = "seeds"
-NO_GEOMETRY = "the seed has no geometry"
-LOST_VIA = "its via_of names no seed"
+NO_GEOMETRY = "The seed has no geometry."
+LOST_VIA = "The point's via_of names no seed."
 
 
 @dataclass(frozen=True)
@@ -45,7 +45,7 @@ def read_seeds(source: str, crs: pyproj.CRS, allow_ballpark: bool = False) -> li
     """
     layer = read_layer(source, ROLE)
     if not len(layer.geometry):
-        raise BadInput(f"{source} holds no seeds: set at least one point")
+        raise BadInput(f"{source} holds no seeds; set at least one point")
     return seeds_of(layer, to_crs(layer, crs, allow_ballpark))
 
 
@@ -90,7 +90,7 @@ def _points(shape: Any, source: str) -> NDArray[np.float64]:
     if shape is None or shape.is_empty:
         return np.empty((0, 2))
     if shape.geom_type not in ("Point", "MultiPoint"):
-        raise BadInput(f"{source} holds a {shape.geom_type}, seeds must be points: name a point layer")
+        raise BadInput(f"{source} holds a {shape.geom_type}, seeds must be points; name a point layer")
     coordinates = shapely.get_coordinates(shape)
     return coordinates[np.isfinite(coordinates).all(axis=1)]
 
@@ -120,7 +120,7 @@ def _numbers(values: NDArray[Any] | None, count: int) -> list[float]:
     try:
         return [0.0 if value is None or value != value else float(value) for value in values]
     except (TypeError, ValueError) as error:
-        raise BadInput("the seeds' column 'order' must hold numbers") from error
+        raise BadInput("The seeds' column 'order' must hold numbers") from error
 
 
 def _unique(seeds: list[Seed]) -> list[Seed]:

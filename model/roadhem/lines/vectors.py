@@ -60,9 +60,9 @@ def read_layer(source: str, role: str) -> Layer:
     try:
         meta, fids, wkb, data = pyogrio.raw.read(path, layer=layer, return_fids=True)
     except (DataSourceError, DataLayerError, ValueError, RuntimeError) as error:
-        raise BadInput(f"cannot read layer '{layer}' of {source}: {_one_line(error)}") from error
+        raise BadInput(f"Layer '{layer}' of {source} cannot be read ({_one_line(error)}); export it again") from error
     if wkb is None:
-        raise BadInput(f"layer '{layer}' of {source} holds no geometry: name a layer of {role}")
+        raise BadInput(f"Layer '{layer}' of {source} holds no geometry; name a layer of {role}")
     crs = pyproj.CRS.from_user_input(meta["crs"]) if meta["crs"] else None
     geometry = shapely.force_2d(shapely.from_wkb(wkb, on_invalid="ignore"))
     return Layer(layer, source, geometry, dict(zip(meta["fields"], data, strict=True)), np.asarray(fids), crs)
@@ -89,14 +89,14 @@ def choose_layer(source: str, layers: list[str], role: str, named: str | None) -
     if named is not None:
         if named in layers:
             return named
-        raise BadInput(f"{source} has no layer '{named}': it has {listed or 'none'}")
+        raise BadInput(f"{source} has no layer '{named}'; it has {listed or 'none'}")
     if role in layers:
         return role
     if len(layers) == 1:
         return layers[0]
     if not layers:
-        raise BadInput(f"{source} holds no layer: name a vector file with {role}")
-    raise BadInput(f"{source} has several layers and none is called '{role}': name one as FILE:LAYER from {listed}")
+        raise BadInput(f"{source} holds no layer; name a vector file with {role}")
+    raise BadInput(f"{source} has several layers and none is called '{role}'; name one as FILE:LAYER from {listed}")
 
 
 def to_crs(layer: Layer, crs: pyproj.CRS, allow_ballpark: bool = False) -> NDArray[Any]:
@@ -108,7 +108,7 @@ def to_crs(layer: Layer, crs: pyproj.CRS, allow_ballpark: bool = False) -> NDArr
         missing does and `allow_ballpark` is not set.
     """
     if layer.crs is None:
-        raise BadInput(f"{layer.source} has no CRS: set the one its coordinates are in before using it")
+        raise BadInput(f"{layer.source} has no CRS; set the one its coordinates are in before using it")
     if layer.crs.equals(crs, ignore_axis_order=True) or not len(layer.geometry):
         return layer.geometry
     known = ~(shapely.is_missing(layer.geometry) | shapely.is_empty(layer.geometry))
@@ -119,7 +119,7 @@ def to_crs(layer: Layer, crs: pyproj.CRS, allow_ballpark: bool = False) -> NDArr
     moved = layer.geometry.copy()
     moved[known] = shapely.transform(layer.geometry[known], transformer.transform, interleaved=False)
     if not np.isfinite(shapely.get_coordinates(moved[known])).all():
-        raise BadInput(f"some coordinates of {layer.source} lie outside where {crs.name} is defined: check its CRS")
+        raise BadInput(f"Some coordinates of {layer.source} lie outside where {crs.name} is defined; check its CRS")
     return moved
 
 
@@ -149,14 +149,14 @@ def best_transformer(
     pair = f"{what} from {source.name} to {target.name}"
     way_out = "bring it to the tiles' CRS yourself, or accept the shift with --allow-ballpark"
     if not group.transformers:
-        raise BadInput(f"PROJ knows no way to transform {pair}: bring it to the tiles' CRS yourself")
+        raise BadInput(f"PROJ knows no way to transform {pair}; bring it to the tiles' CRS yourself")
     if not allow_ballpark and not group.best_available:
         grids = [g.short_name for op in group.unavailable_operations for g in op.grids if not g.available]
-        named = f"the grid {grids[0]}" if grids else "a grid"
-        raise BadInput(f"{named} that the best operation needs to transform {pair} is not installed: {way_out}")
+        named = f"The grid {grids[0]}" if grids else "A grid"
+        raise BadInput(f"{named} that the best operation needs to transform {pair} is not installed; {way_out}")
     best = group.transformers[0]
     if not allow_ballpark and "ballpark" in best.description.lower():
-        raise BadInput(f"only a ballpark operation transforms {pair}, which may be metres off: {way_out}")
+        raise BadInput(f"Only a ballpark operation transforms {pair}, which may be metres off; {way_out}")
     return best
 
 
@@ -170,13 +170,13 @@ def _area(crs: pyproj.CRS, bounds: NDArray[np.float64]) -> AreaOfInterest | None
 
 def _layers(path: str, source: str) -> list[str]:
     if not path.startswith(POSTGIS) and not Path(path).exists():
-        raise BadInput(f"there is no file {path}: check the name")
+        raise BadInput(f"There is no file {path}; check the name")
     if path.startswith(POSTGIS) and "PostgreSQL" not in pyogrio.list_drivers():
-        raise BadInput(f"the installed GDAL cannot read PostGIS: export {source} to a GeoPackage and name that")
+        raise BadInput(f"The installed GDAL cannot read PostGIS; export {source} to a GeoPackage and name that")
     try:
         return [str(name) for name, _ in pyogrio.list_layers(path)]
     except DataSourceError as error:
-        raise BadInput(f"{source} is not a vector file that can be read: name a GeoPackage or GeoJSON") from error
+        raise BadInput(f"{source} is not a vector file that can be read; name a GeoPackage or GeoJSON") from error
 
 
 def _one_line(error: Exception) -> str:
