@@ -110,3 +110,14 @@ def test_inside_asks_pixel_centres():
     x, y = centres()
     found = inside(shape, Frame.of_size(SIZE, CELL))
     np.testing.assert_array_equal(found, shapely.contains_xy(shape, x, y))
+
+
+def test_along_counts_from_the_start_of_each_line():
+    """Should measure the way along a bent line to the nearest point.  [built] shapely."""
+    lines = [LineString([(2, 30), (9, 30), (9, 38)]), LineString([(3, 3), (30, 5), (31, 20)])]
+    found = nearest_on_lines(lines, SIZE, CELL, REACH)
+    x, y = centres()
+    for k, line in enumerate(lines):
+        mine = found.line_index == k
+        expected = shapely.line_locate_point(line, shapely.points(x, y)[mine])
+        np.testing.assert_allclose(found.along[mine], expected, atol=1e-3)

@@ -47,6 +47,8 @@ def take_picture(
     if flight.has("coarser"):
         light = resample(light, pixel, rng)
     image = tone_curve(light, flight, rng)
+    if flight.has("fringe"):
+        image = fringe(image, rng)
     if flight.has("halo"):
         image = sharpen(image, rng)
     image += noise_for(image, rng)
@@ -102,6 +104,17 @@ def saturation_matrix(amount: float) -> NDArray[np.float32]:
     """Colour matrix (3, 3) that keeps brightness and multiplies saturation by `amount`."""
     grey = np.tile(np.array([0.30, 0.59, 0.11]), (3, 1))
     return (grey + amount * (np.eye(3) - grey)).astype(np.float32)
+
+
+def fringe(image: NDArray[np.float32], rng: np.random.Generator) -> NDArray[np.float32]:
+    """Shift red and blue against each other by a part of a pixel, as lenses and scanners do."""
+    shift = rng.normal(0, 0.22, 2).clip(-0.5, 0.5)
+    planes = list(cv2.split(image))
+    for k, sign in ((0, 1), (2, -1)):
+        matrix = np.array([[1, 0, sign * shift[0]], [0, 1, sign * shift[1]]])
+        size = (image.shape[1], image.shape[0])
+        planes[k] = cv2.warpAffine(planes[k], matrix, size, flags=cv2.INTER_LINEAR, borderMode=cv2.BORDER_REPLICATE)
+    return cv2.merge(planes)
 
 
 def sharpen(image: NDArray[np.float32], rng: np.random.Generator) -> NDArray[np.float32]:

@@ -27,6 +27,7 @@ class NearestField:
     distance : (n, n) float32 metres, cut at the reach.
     dx, dy : (n, n) float32 metres east and north from the cell centre to the nearest point; 0 beyond the reach.
     theta : (n, n) float32 axis angle of the line there, radians in [0, pi), from east counter-clockwise.
+    along : (n, n) float32 metres from the start of the line to the nearest point; 0 beyond the reach.
     line_index : (n, n) int32 index of the line, -1 beyond the reach; where several are equally near, the first.
     """
 
@@ -34,6 +35,7 @@ class NearestField:
     dx: NDArray[np.float32]
     dy: NDArray[np.float32]
     theta: NDArray[np.float32]
+    along: NDArray[np.float32]
     line_index: NDArray[np.int32]
 
 
@@ -70,9 +72,9 @@ def nearest_on_lines(lines: Sequence[LineString], size_m: float, cell: float, re
     coords, owner = shapely.get_coordinates([lines[k] for k in keep], return_index=True)
     index = np.asarray(keep, np.int32)[owner] if keep else np.zeros(0, np.int32)
     joined = owner[1:] == owner[:-1]
-    starts, ends = coords[:-1][joined], coords[1:][joined]
-    pieces, parts = _split_long(starts, ends, reach)
-    return NearestField(*_search(pieces, index[:-1][joined][parts], count, float(cell), float(reach), float(size_m)))
+    pieces, parts, begin = _split_long(coords[:-1][joined], coords[1:][joined], owner[:-1][joined], reach)
+    lines_of = index[:-1][joined][parts]
+    return NearestField(*_search(pieces, begin, lines_of, count, float(cell), float(reach), float(size_m)))
 
 
 def signed_distance(world: World, pixel: float) -> SignedDistance:
@@ -83,31 +85,40 @@ def signed_distance(world: World, pixel: float) -> SignedDistance:
 
 
 def _split_long(
-    starts: NDArray[np.float64], ends: NDArray[np.float64], longest: float
-) -> tuple[NDArray[np.float64], NDArray[np.int64]]:
-    """Cut segments so that none is longer than `longest`: (m, 4) pieces and the segment each comes from."""
-    parts = np.maximum(np.ceil(np.hypot(*(ends - starts).T) / longest), 1).astype(np.int64)
+    starts: NDArray[np.float64], ends: NDArray[np.float64], line: NDArray[np.int64], longest: float
+) -> tuple[NDArray[np.float64], NDArray[np.int64], NDArray[np.float64]]:
+    """Cut segments so that none is longer than `longest`.
+
+    Returns
+    -------
+    pieces (m, 4), the segment each comes from (m,), and how far along its line it begins (m,).
+    """
+    lengths = np.hypot(*(ends - starts).T)
+    parts = np.maximum(np.ceil(lengths / longest), 1).astype(np.int64)
     owner = np.repeat(np.arange(len(starts)), parts)
     order = np.arange(len(owner)) - np.repeat(np.cumsum(parts) - parts, parts)
-    share = (order / parts[owner])[:, None]
-    step = (1 / parts[owner])[:, None]
-    along = (ends - starts)[owner]
-    return np.hstack([starts[owner] + along * share, starts[owner] + along * (share + step)]), owner
+    share, step = (order / parts[owner])[:, None], (1 / parts[owner])[:, None]
+    before = np.cumsum(lengths) - lengths
+    first = np.searchsorted(line, line)
+    begin = (before - before[first])[owner] + share[:, 0] * lengths[owner]
+    run = (ends - starts)[owner]
+    return np.hstack([starts[owner] + run * share, starts[owner] + run * (share + step)]), owner, begin
 
 
 @numba.njit(cache=True)
-def _search(pieces, index, count, cell, reach, size):  # type: ignore[no-untyped-def]
+def _search(pieces, begin, index, count, cell, reach, size):  # type: ignore[no-untyped-def]
     shape = (count, count)
     best = np.full(shape, reach * reach, np.float64)
     dx, dy = np.zeros(shape, np.float32), np.zeros(shape, np.float32)
-    theta, line = np.zeros(shape, np.float32), np.full(shape, -1, np.int32)
+    theta, along = np.zeros(shape, np.float32), np.zeros(shape, np.float32)
+    line = np.full(shape, -1, np.int32)
     for k in range(len(pieces)):
         x0, y0, x1, y1 = pieces[k, 0], pieces[k, 1], pieces[k, 2], pieces[k, 3]
         ux, uy = x1 - x0, y1 - y0
         square = ux * ux + uy * uy
         if square == 0.0:
             continue
-        angle = np.arctan2(uy, ux) % np.pi
+        angle, length = np.arctan2(uy, ux) % np.pi, np.sqrt(square)
         c0, c1 = int((min(x0, x1) - reach) / cell), int((max(x0, x1) + reach) / cell) + 1
         r0, r1 = int((size - max(y0, y1) - reach) / cell), int((size - min(y0, y1) + reach) / cell) + 1
         for r in range(max(r0, 0), min(r1, count)):
@@ -120,4 +131,5 @@ def _search(pieces, index, count, cell, reach, size):  # type: ignore[no-untyped
                 if gap < best[r, c]:
                     best[r, c] = gap
                     dx[r, c], dy[r, c], theta[r, c], line[r, c] = ex, ey, angle, index[k]
-    return np.sqrt(best).astype(np.float32), dx, dy, theta, line
+                    along[r, c] = begin[k] + share * length
+    return np.sqrt(best).astype(np.float32), dx, dy, theta, along, line

@@ -19,6 +19,7 @@ CHANCES = {
     "no_data": 0.10,
     "haze": 0.25,
     "halo": 0.55,
+    "fringe": 0.15,
     "jpeg": 0.65,
     "coarser": 0.55,
     "tracks": 0.7,

@@ -2,15 +2,18 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import cv2
 import numba
 import numpy as np
 from numpy.typing import NDArray
 
 from roadhem_training.scenes.coverage import Frame, Patch, cover_area
+from roadhem_training.scenes.distance import SignedDistance
 from roadhem_training.scenes.materials import Material, linear, material_of, pick_colour
 from roadhem_training.scenes.noise import DRIFT_M, GRAIN_M, PATCH_M, PEBBLE_M, SPOT_M, Noise
-from roadhem_training.scenes.world import World
+from roadhem_training.scenes.world import Cover, World
 
 RAGGED = 0.5
 """How much of a soft edge's width its outline wanders."""
@@ -18,34 +21,63 @@ RAGGED = 0.5
 SHARP_PX = 0.5
 """An edge that fades over less than this is drawn sharp."""
 
+STONE_M = (0.5, 0.8, 1.0, 1.0, 2.0, 3.0)
+"""Lengths of curb stones."""
+
 OWN_COLOUR = 0.25
 """Share of covers that get a colour of their own rather than the place's usual one of their material."""
 
 
-def lay_ground(
-    world: World, frame: Frame, noise: Noise, rng: np.random.Generator
-) -> tuple[NDArray[np.float32], NDArray[np.float32]]:
-    """Paint the covers and curb stones of a world.
+@dataclass(frozen=True)
+class Ground:
+    """The bare ground in pixels.
 
-    Returns
-    -------
-    image (rows, cols, 3) float32 relative reflectance, relief (rows, cols) float32 metres added by the covers.
+    Attributes
+    ----------
+    colour : (rows, cols, 3) float32 relative reflectance.
+    relief : (rows, cols) float32 metres added by the covers.
     """
-    image = np.full((frame.rows, frame.cols, 3), 0.15, np.float32)
-    relief = np.zeros((frame.rows, frame.cols), np.float32)
+
+    colour: NDArray[np.float32]
+    relief: NDArray[np.float32]
+
+
+def lay_ground(
+    world: World, distance: SignedDistance, frame: Frame, noise: Noise, rng: np.random.Generator
+) -> Ground:
+    """Paint the covers, then the curb stones of a world."""
+    shape = (frame.rows, frame.cols)
+    ground = Ground(np.full((*shape, 3), 0.15, np.float32), np.zeros(shape, np.float32))
     means: dict[str, NDArray[np.float32]] = {}
-    for cover in world.ground + world.curb_stones:
+    _lay_covers(ground, world.ground, means, frame, noise, rng)
+    before = ground.colour.copy()
+    _lay_covers(ground, world.curb_stones, means, frame, noise, rng)
+    nearest = distance.nearest
+    numbers = np.array([rng.choice(STONE_M), rng.uniform(0.0, 0.12), rng.uniform(0.0, 0.4), frame.pixel], np.float32)
+    _vary_stones(ground.colour, before, nearest.line_index, nearest.along, numbers)
+    return ground
+
+
+def _lay_covers(
+    ground: Ground,
+    covers: list[Cover],
+    means: dict[str, NDArray[np.float32]],
+    frame: Frame,
+    noise: Noise,
+    rng: np.random.Generator,
+) -> None:
+    """Lay covers in order; `means` keeps the place's usual colour of each material."""
+    for cover in covers:
         patch = cover_area(cover.area, frame, 2 * cover.edge_softness)
         if patch is None:
             continue
-        _raise(relief[patch.window], patch.cover, np.float32(cover.relief))
+        _raise(ground.relief[patch.window], patch.cover, np.float32(cover.relief))
         material = material_of(cover.material)
         if cover.material not in means or rng.random() < OWN_COLOUR:
             means[cover.material] = pick_colour(material, rng, 0.0)
         colour = means[cover.material] * np.float32((1 + 0.28 * cover.tone) ** 2.2)
         soft = _soften(patch, cover.edge_softness, noise)
-        lay(image, soft, material, colour, cover.direction, frame, noise, rng)
-    return image, relief
+        lay(ground.colour, soft, material, colour, cover.direction, frame, noise, rng)
 
 
 def _soften(patch: Patch, softness: float, noise: Noise) -> Patch:
@@ -99,6 +131,23 @@ def _row_numbers(material: Material, direction: float, rng: np.random.Generator)
     size = (rows.length * scale, rows.width * scale)
     turn = (np.cos(direction), np.sin(direction))
     return np.array([*size, rows.joint, rows.joint_tone, rows.bond, 2 * rows.vary, *turn], np.float32)
+
+
+@numba.njit(cache=True)
+def _vary_stones(image, before, line, along, numbers):  # type: ignore[no-untyped-def]
+    """Give each curb stone its own tone and a dark joint, where stones changed the picture."""
+    length, vary, joint, pixel = numbers
+    for r in range(image.shape[0]):
+        for c in range(image.shape[1]):
+            if line[r, c] < 0 or image[r, c, 1] == before[r, c, 1]:
+                continue
+            place = along[r, c] / length
+            stone = np.floor(place)
+            tone = 1 + vary * _hash(stone, np.float32(line[r, c]))
+            gap = min(place - stone, stone + 1 - place) * length
+            tone *= 1 - joint * min(max(np.float32(1) - gap / pixel, np.float32(0)), np.float32(1))
+            for k in range(3):
+                image[r, c, k] *= tone
 
 
 @numba.njit(cache=True)

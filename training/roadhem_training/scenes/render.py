@@ -14,7 +14,7 @@ from roadhem_training.scenes.coverage import Frame
 from roadhem_training.scenes.crowns import draw_crowns
 from roadhem_training.scenes.distance import SignedDistance, signed_distance
 from roadhem_training.scenes.flight import Flight, draw_flight
-from roadhem_training.scenes.ground import lay_ground
+from roadhem_training.scenes.ground import Ground, lay_ground
 from roadhem_training.scenes.heights import ground_height, sense_height
 from roadhem_training.scenes.light import away_from_sun, cast_bodies, cast_crowns, dim_sky, light_up, shade_curbs
 from roadhem_training.scenes.litter import litter_edges
@@ -87,7 +87,8 @@ def view(world: World, flight: Flight, seed: int, pixel: float = PIXEL_M) -> Vie
     frame = Frame.of_size(world.size, pixel)
     noise = Noise(seed, frame)
     distance = signed_distance(world, pixel)
-    image, relief = _surface(world, distance, frame, flight, noise, np.random.default_rng([seed, 3]))
+    ground = _surface(world, distance, frame, flight, noise, np.random.default_rng([seed, 3]))
+    image = ground.colour
     cars = [body for body in world.bodies if body.what in VEHICLES]
     dark = cast_bodies([body for body in world.bodies if body.what not in VEHICLES], frame, flight)
     cast_crowns(dark, world.crowns, frame, flight, noise)
@@ -106,7 +107,7 @@ def view(world: World, flight: Flight, seed: int, pixel: float = PIXEL_M) -> Vie
     draw_crowns(image, hidden, world.crowns, frame, flight, noise, rng)
     if wires is not None:
         image *= 1 - mask_wires(wires, flight.lean_at(world.size / 2, world.size / 2, frame), frame)[..., None]
-    return View(image, ground_height(world, relief, distance, frame, noise), shadow, hidden)
+    return View(image, ground_height(world, ground.relief, distance, frame, noise), shadow, hidden)
 
 
 def _surface(
@@ -116,11 +117,12 @@ def _surface(
     flight: Flight,
     noise: Noise,
     rng: np.random.Generator,
-) -> tuple[NDArray[np.float32], NDArray[np.float32]]:
-    """Reflectance of the ground (covers, wear, paint, more wear, litter) and the relief of its covers."""
-    image, relief = lay_ground(world, frame, noise, rng)
+) -> Ground:
+    """Lay the ground and all that lies on it: wear, paint, more wear, litter."""
+    ground = lay_ground(world, distance, frame, noise, rng)
+    image = ground.colour
     wear_surface(image, distance, flight, noise, rng)
     paint_markings(image, world.paints, frame, noise, rng)
     wear_paint(image, distance, frame, flight, rng)
     litter_edges(image, world, distance, flight, noise, rng)
-    return image, relief
+    return ground
