@@ -47,18 +47,17 @@ def bridge(sheet: Sheet, rows: Rows, ended: bool, settings: Settings) -> Rows | 
     """
     last_corner = np.flatnonzero(rows[:, FORM] == CORNER)
     solid = rows[last_corner[-1] + 1 :] if len(last_corner) else rows
-    solid = solid[solid[-1, TRAVEL] - solid[:, TRAVEL] <= settings.bridge_memory_m]
-    if solid[-1, TRAVEL] - solid[0, TRAVEL] < settings.bridge_proof_m:
+    back_m = solid[-1, TRAVEL] - solid[:, TRAVEL]
+    kept = solid[(back_m <= settings.bridge_memory_m) & (back_m >= settings.bridge_drop_m)]
+    if len(kept) < 2 or kept[-1, TRAVEL] - kept[0, TRAVEL] < settings.bridge_least_m:
         return None
-    kept = solid[solid[-1, TRAVEL] - solid[:, TRAVEL] >= settings.bridge_drop_m]
     arc = fit_arc(kept, settings.bridge_memory_m / 2)
     surface = side(kept)
     longest = settings.bridge_ended_m if ended else settings.bridge_m
-    landings = _landings(sheet, arc, surface, longest, settings)
-    landings = [row for row in landings if _ahead(row, rows[-1]) >= settings.pace.step_max]
+    longest = min(longest, (kept[-1, TRAVEL] - kept[0, TRAVEL]) / settings.bridge_proof_share)
     tried: list[Rows] = []
-    for row in landings:
-        if any(_lies_on(row, proof) for proof in tried):
+    for row in _landings(sheet, arc, surface, longest, settings):
+        if _ahead(row, rows[-1]) < settings.pace.step_max or any(_lies_on(row, proof) for proof in tried):
             continue
         proof, sure = _proof(sheet, row, rows[-1], settings)
         if sure and side(proof) * surface > 0:
@@ -75,15 +74,12 @@ def _landings(sheet: Sheet, arc: Arc, surface: float, longest_m: float, settings
     ahead = np.arange(settings.bridge_drop_m, longest_m + settings.bridge_drop_m, settings.pace.step_max)
     middle, heading = arc.at(ahead)
     wide = settings.bridge_aside_m + settings.bridge_aside_share * ahead
-    places, owner = [], []
-    for k in range(len(ahead)):
-        lateral = np.arange(-wide[k], wide[k] + 1e-9, settings.scout_m)
-        normal = np.array([-math.sin(heading[k]), math.cos(heading[k])])
-        places.append(middle[k] + lateral[:, None] * normal)
-        owner.append(np.full(len(lateral), k))
-    index = np.concatenate(owner)
+    across = np.arange(-wide[-1], wide[-1], settings.scout_m)
+    index, column = np.nonzero(np.abs(across) <= wide[:, None])
+    normal = np.stack([-np.sin(heading), np.cos(heading)], axis=-1)
+    places = middle[index] + across[column, None] * normal[index]
     headings = np.stack([np.cos(heading), np.sin(heading)], axis=-1)[index]
-    found = lines_at(sheet, np.concatenate(places), settings, headings)
+    found = lines_at(sheet, places, settings, headings)
     away = found[:, [X, Y]] - middle[index]
     aside = away[:, 1] * headings[:, 0] - away[:, 0] * headings[:, 1]
     along = np.abs(np.sum(away * headings, axis=1))
@@ -106,16 +102,18 @@ def _lies_on(row: Rows, line: Rows) -> bool:
 
 def _proof(sheet: Sheet, row: Rows, end: Rows, settings: Settings) -> tuple[Rows, bool]:
     """The line through a landing, from its first sight beyond the end to as far as proves it; whether it does."""
+    gap = float(np.hypot(row[X] - end[X], row[Y] - end[Y]))
+    proof = min(max(settings.bridge_proof_share * gap, settings.bridge_least_m), settings.bridge_proof_m)
+    least = proof + settings.bridge_drop_m
     start = row[None].copy()
     start[0, [TRAVEL, COAST]] = 0.0
     back, _, _ = walk_on(sheet, turned(start), settings.bridge_m, settings)
-    whole, code, _ = walk_on(sheet, turned(back), settings.bridge_proof_m + settings.bridge_drop_m, settings)
+    whole, code, _ = walk_on(sheet, turned(back), least, settings)
     ahead = (whole[:, X] - end[X]) * end[TX] + (whole[:, Y] - end[Y]) * end[TY]
     behind = np.flatnonzero((ahead < settings.pace.step_max) & (whole[:, TRAVEL] < 0.0))
     whole = whole[int(np.max(behind, initial=-1)) + 1 :]
     seen = whole[whole[:, COAST] == 0.0]
     length = whole[-1, TRAVEL] - whole[0, TRAVEL]
-    least = settings.bridge_proof_m + settings.bridge_drop_m
     sure = length >= least or (code in (OUTSIDE, NO_DATA) and length >= 0.5 * least)
     return whole, bool(sure and np.mean(seen[:, NEAR]) >= settings.sure)
 

@@ -118,8 +118,10 @@ class Settings:
     bridge_turn: float = 16.0
     bridge_turn_per_m: float = 1.8
     """Degrees, and degrees per metre of arc, by which a landing may turn from it."""
+    bridge_least_m: float = 1.6
     bridge_proof_m: float = 3.6
-    """Metres that must be followed surely before and after a gap."""
+    bridge_proof_share: float = 0.5
+    """This share of a gap must be followed surely before and after it, between the two lengths."""
     bridge_spread: float = 0.025
     """Growth of the standard error with the distance from the nearer end of a bridge, metre per metre."""
     bridge_tries: int = 6
@@ -128,6 +130,8 @@ class Settings:
     sharpen_chord_m: float = 0.8
     sharpen_least: float = math.radians(25.0)
     """A turn between chords of this length by at least this may be a corner that the fields rounded,"""
+    sharpen_leg_m: float = 1.6
+    """... (its legs reach as far as those of other corners, or as this where the next bend is near)"""
     sharpen_within: float = 0.3
     """... if its legs turn by no more than this share of it"""
     sharpen_off_m: float = 0.2

@@ -30,17 +30,19 @@ def sharpen(rows: Rows, settings: Settings) -> Rows:
     """
     turns = _turns(rows, settings.sharpen_chord_m)
     order = np.argsort(-np.abs(turns), kind="stable")
-    corners: list[tuple[float, float, Rows]] = []
+    corners: list[tuple[float, Rows]] = []
     for k in order[np.abs(turns[order]) >= settings.sharpen_least]:
         at = rows[k, TRAVEL]
-        if any(abs(at - middle) < settings.corner_leg_m for middle, _, _ in corners):
+        if any(abs(at - other) < settings.sharpen_leg_m for other, _ in corners):
             continue
-        if (vertex := _corner_at(rows, int(k), settings)) is not None:
-            corners.append((at, settings.corner_blur_m, vertex))
+        for leg_m in (settings.corner_leg_m, settings.sharpen_leg_m):
+            if (vertex := _corner_at(rows, int(k), leg_m, settings)) is not None:
+                corners.append((at, vertex))
+                break
     keep = np.ones(len(rows), bool)
-    for at, blur, _ in corners:
-        keep &= np.abs(rows[:, TRAVEL] - at) >= blur
-    merged = np.concatenate([rows[keep], *(vertex[None] for _, _, vertex in corners)])
+    for at, _ in corners:
+        keep &= np.abs(rows[:, TRAVEL] - at) >= settings.corner_blur_m
+    merged = np.concatenate([rows[keep], *(vertex[None] for _, vertex in corners)])
     return merged[np.argsort(merged[:, TRAVEL], kind="stable")]
 
 
@@ -57,12 +59,11 @@ def _turns(rows: Rows, chord_m: float) -> NDArray[np.float64]:
     return turns
 
 
-def _corner_at(rows: Rows, k: int, settings: Settings) -> Rows | None:
+def _corner_at(rows: Rows, k: int, leg_m: float, settings: Settings) -> Rows | None:
     """The vertex at row k, if the line is straight on either side of it and turns there alone."""
-    at = rows[k, TRAVEL]
-    blur, leg = settings.corner_blur_m, settings.corner_leg_m
-    before, after = between(rows[:k], blur, leg, at), between(rows[k + 1 :], blur, leg, at)
-    if min(len(before), len(after)) < 4:
+    at, blur = rows[k, TRAVEL], settings.corner_blur_m
+    before, after = between(rows[:k], blur, leg_m, at), between(rows[k + 1 :], blur, leg_m, at)
+    if min(len(before), len(after)) < 3:
         return None
     one, two = straight(before), straight(after)
     turn = abs(turn_of(one.direction, two.direction))
