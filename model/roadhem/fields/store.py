@@ -159,9 +159,7 @@ class FieldStore:
         height = self.mosaic.read_height(row - reach, col - reach, rows + 2 * reach, cols + 2 * reach)
         reliefs = (None, None) if height is None else relief(height)
         inputs = stack_inputs(colour, cover == COVER_VALID, *reliefs)
-        core = cover[halo : rows - halo, halo : cols - halo]
-        cells = core.reshape(core.shape[0] // NET_STRIDE, NET_STRIDE, -1, NET_STRIDE).min(axis=(1, 3))
-        return _Prepared(block, inputs[None], cells)
+        return _Prepared(block, inputs[None], _cell_cover(cover[halo : rows - halo, halo : cols - halo]))
 
     def _run(self, prepared: _Prepared) -> Iterator[tuple[Place, Page]]:
         """Run the net on a block and yield its pages."""
@@ -176,6 +174,13 @@ class FieldStore:
             cover = prepared.cover[top : top + PAGE, left : left + PAGE]
             part = fields[0, :, margin + top : margin + top + PAGE, margin + left : margin + left + PAGE]
             yield (p, q), quantise(part, cover, self.model.calibration)
+
+
+def _cell_cover(cover: NDArray[np.uint8]) -> NDArray[np.uint8]:
+    """Least cover of each cell's pixels: a cell is valid where all of them are."""
+    step = NET_STRIDE
+    corners = [cover[i::step, j::step] for i in range(step) for j in range(step)]
+    return np.minimum.reduce(corners)
 
 
 def _blank() -> Page:

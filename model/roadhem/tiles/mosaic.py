@@ -14,8 +14,9 @@ from pyproj import CRS
 from roadhem.errors import BadInput
 from roadhem.tiles.grid import PIXEL_M, WorkingGrid
 from roadhem.tiles.height import open_height
+from roadhem.tiles.resample import VALID
 from roadhem.tiles.scale import metres_per_unit, point_scale, read_crs
-from roadhem.tiles.sheet import VALID, Stack, pixel_bounds
+from roadhem.tiles.sheet import Stack, pixel_boxes
 from roadhem.tiles.source import open_tile
 from roadhem.tiles.tile import Tile
 
@@ -65,11 +66,11 @@ class Mosaic:
         boxes = np.array([tile.bounds for tile in tiles])
         middle = (boxes[:, :2].min(axis=0) + boxes[:, 2:].max(axis=0)) / 2
         self.grid = WorkingGrid.for_scale(metres_per_unit(self.crs), point_scale(self.crs, *middle))
-        self._colour = Stack(tiles, smooth=False)
-        self._height = Stack(height, smooth=True) if height else None
+        self._colour = Stack(tiles, self.grid, smooth=False)
+        self._height = Stack(height, self.grid, smooth=True) if height else None
         self.tiles = self._colour.tiles
         self._boxes = np.array([tile.bounds for tile in self.tiles])
-        self._pixels = pixel_bounds(self._boxes, self.grid)
+        self._pixels = pixel_boxes(self.tiles, self.grid)
 
     @classmethod
     def open(
@@ -138,7 +139,7 @@ class Mosaic:
         self, row: int, col: int, rows: int, cols: int
     ) -> tuple[NDArray[np.float32], NDArray[np.uint8]]:
         """Read colour (3, rows, cols) and cover (rows, cols) as in `Patch`."""
-        colour, cover = self._colour.sample(self.grid, row, col, rows, cols, 3)
+        colour, cover = self._colour.sample(row, col, rows, cols, 3)
         np.clip(colour, 0, 1, out=colour)
         return colour, cover
 
@@ -146,8 +147,9 @@ class Mosaic:
         """Read heights (rows, cols) in metres, NaN where there is none; None for a run without heights."""
         if self._height is None:
             return None
-        height, cover = self._height.sample(self.grid, row, col, rows, cols, 1)
-        return np.where(cover == VALID, height[0], np.float32(np.nan))
+        height, cover = self._height.sample(row, col, rows, cols, 1)
+        height[0, cover != VALID] = np.nan
+        return height[0]
 
     def source_at(self, x_m: float, y_m: float) -> str:
         """Name of the tile that the pixel at grid metres (x_m, y_m) comes from; "" outside all tiles."""
@@ -158,8 +160,7 @@ class Mosaic:
         if len(inside) == 1:
             return self.tiles[inside[0]].name
         for index in inside:
-            alone = Stack([self.tiles[index]], smooth=True)
-            if alone.sample(self.grid, row, col, 1, 1, 3)[1][0, 0] == VALID:
+            if Stack([self.tiles[index]], self.grid, smooth=True).sample(row, col, 1, 1, 3)[1][0, 0] == VALID:
                 return self.tiles[index].name
         return ""
 

@@ -8,6 +8,9 @@ import numpy as np
 from numba import njit
 from numpy.typing import NDArray
 
+OUTSIDE, NO_DATA, VALID = 0, 1, 2
+"""Cover: what the tiles hold at a pixel."""
+
 SNAP = 1e-6
 """Share of a pixel below which an overlap or a shift counts as none."""
 
@@ -223,3 +226,39 @@ def _turned(source, missing, origin, inverse, phase, cell, window, samples, sums
                 sums[plane, r, c] = total[plane]
             for flag in range(missing.shape[0]):
                 lost[flag, r, c] = gone[flag]
+
+
+def settle(sums: NDArray[np.float32], lost: NDArray[np.float32]) -> NDArray[np.uint8]:
+    """Make sums over footprints with missing pixels into values, in place, and return their cover.
+
+    A pixel is valid when at least half of its weight is; the rest is scaled up to the whole.
+
+    Parameters
+    ----------
+    sums : (b, rows, cols) sums of weighted valid values; on return values, 0 where not valid.
+    lost : (2, rows, cols) weights of the pixels that are not valid, and of those outside the tiles.
+
+    Returns
+    -------
+    (rows, cols) cover.
+    """
+    cover = np.empty(lost.shape[1:], np.uint8)
+    _settle(sums, lost, cover)
+    return cover
+
+
+@njit(cache=True, nogil=True)
+def _settle(sums, lost, cover):  # type: ignore[no-untyped-def]
+    half, one = np.float32(0.5), np.float32(1)
+    for r in range(cover.shape[0]):
+        for c in range(cover.shape[1]):
+            gone = lost[0, r, c]
+            if gone <= half:
+                cover[r, c] = VALID
+                if gone != 0:
+                    for plane in range(sums.shape[0]):
+                        sums[plane, r, c] /= one - gone
+            else:
+                cover[r, c] = OUTSIDE if lost[1, r, c] > half else NO_DATA
+                for plane in range(sums.shape[0]):
+                    sums[plane, r, c] = 0
