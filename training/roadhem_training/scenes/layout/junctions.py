@@ -13,6 +13,7 @@ from roadhem_training.scenes.layout import odds
 from roadhem_training.scenes.layout.alignment import quad_segments
 from roadhem_training.scenes.layout.odds import between, chance, pick, pick_between
 from roadhem_training.scenes.layout.plan import Edging, Island, Junction, Leg, Road
+from roadhem_training.scenes.layout.surface import GRID
 
 END = 2.0  # a road that meets another this near its own end stops there, metres
 STRAIGHT = math.radians(176)  # legs at least this far apart need no curb return
@@ -117,6 +118,7 @@ def _crossing(
 
 def closing(shape: BaseGeometry, radius: float) -> list[Polygon]:
     """The slivers that round the inner corners of `shape` with arcs of `radius`."""
+    shape = shapely.set_precision(shape, GRID)
     closed = shape.buffer(radius, join_style="mitre").buffer(-radius, quad_segs=quad_segments(radius))
     pieces = shapely.get_parts(shapely.difference(closed, shape))
     return [p for p in pieces if isinstance(p, Polygon) and p.area > max(1e-3, 0.01 * radius * radius)]

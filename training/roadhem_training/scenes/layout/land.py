@@ -39,6 +39,7 @@ CARS_OFF_ROAD = {
     "perimeter": 0.3, "detached": 0.35, "halls": 0.6, "park": 0.02, "field": 0.01, "wood": 0.01, "square": 0.2,
     "waste": 0.4,
 }  # fmt: skip
+PLOT_GRID = 1e-3
 PARCEL = (8.0, 40.0)
 
 
@@ -55,7 +56,8 @@ def fill(rng: Rng, world: World, plan: Plan, season: trees.Season, face: Polygon
     world.ground.append(Cover(face, pick(rng, GROUND[use]), float(rng.normal(0, 0.3)), 0.0, relief, heading))
     walks = bands.walks(front, face)
     stones = [bands.band(s, s.edging.stone, face) for s in front if s.edging.stone]
-    plot = face.difference(shapely.union_all([c.area for c in walks] + stones)).buffer(-0.05)
+    taken = shapely.union_all([c.area for c in walks] + stones)
+    plot = shapely.set_precision(face.difference(taken), PLOT_GRID).buffer(-0.05)
     built = blocks.buildings(rng, use, plot, front)
     fences, lines = blocks.enclosure(rng, use, plot)
     garden = plot.buffer(-0.8).difference(shapely.union_all([b.footprint.buffer(0.8, quad_segs=2) for b in built]))

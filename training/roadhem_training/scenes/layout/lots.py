@@ -6,7 +6,7 @@ import math
 
 import numpy as np
 import shapely
-from shapely.geometry import MultiPolygon, Point, Polygon
+from shapely.geometry import MultiPolygon, Point, Polygon, box
 from shapely.geometry.base import BaseGeometry
 
 from roadhem_training.scenes.layout import odds
@@ -17,7 +17,7 @@ from roadhem_training.scenes.layout.plan import Edging, Island, Part, Plan
 from roadhem_training.scenes.layout.shapes import oriented_box
 from roadhem_training.scenes.layout.surface import polygons
 from roadhem_training.scenes.layout.traffic import vehicle
-from roadhem_training.scenes.world import Paint
+from roadhem_training.scenes.world import MARGIN, Paint
 
 Rng = np.random.Generator
 
@@ -48,8 +48,9 @@ def lot_edging(rng: Rng) -> Edging:
 
 def place_lots(rng: Rng, plan: Plan, surface: BaseGeometry, window: Polygon, share: float) -> None:
     """Put a car park, yard or court with a mouth into a `share` of the blocks between the roads."""
+    seen = box(-MARGIN, -MARGIN, plan.size + MARGIN, plan.size + MARGIN)
     for face in polygons(window.difference(surface)):
-        if face.area < 350 or not chance(rng, share):
+        if face.area < 350 or not chance(rng, share) or not seen.intersects(face):
             continue
         room = face.buffer(-rng.uniform(3.5, 7.0))
         best = max(polygons(room), key=lambda p: p.area, default=Polygon())
@@ -120,13 +121,13 @@ def _mouth(
         return None
     end = start + (reach + 1.5) * across
     lane = Alignment(np.array([start, end])).strip(0, reach + 1.5, -width / 2, width / 2)
-    if not shapely.union_all([face.buffer(1e-6), surface]).contains(lane):
+    near = surface.intersection(Point(start + reach * across).buffer(width + 14))
+    if lane.difference(face).difference(near).area > 1e-3:
         return None
-    near = Point(start + reach * across).buffer(width + 14)
     radius = odds.pick_between(rng, MOUTH_RADIUS)
     out = [lane]
     if radius > 0.1:
-        ground = shapely.union(surface.intersection(near), lane)
+        ground = shapely.union(near, lane)
         disc = Point(start + reach * across).buffer(width / 2 + 2 * radius + 1)
         out += [p for p in closing(ground, radius) if disc.contains(p)]
     return out

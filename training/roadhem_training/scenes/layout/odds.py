@@ -23,7 +23,7 @@ STYLE_ODDS = {
 }  # fmt: skip
 
 CORNER_RADIUS_ODDS: Mapping[Span, float] = {
-    (0.0, 0.0): 0.10, (0.3, 1.5): 0.10, (1.5, 4.5): 0.28, (4.5, 8.0): 0.30, (8.0, 11.0): 0.14, (11.0, 15.0): 0.08,
+    (0.0, 0.0): 0.13, (0.3, 1.5): 0.15, (1.5, 4.5): 0.33, (4.5, 8.0): 0.24, (8.0, 11.0): 0.10, (11.0, 15.0): 0.05,
 }  # fmt: skip
 CURB_HEIGHT: Span = (0.06, 0.20)
 LOWERED_HEIGHT: Span = (0.0, 0.04)
@@ -77,10 +77,13 @@ class StreetOdds:
     in_block: bool = False
 
 
+BLOCK_SCALE = {1.0: 0.75, 1.5: 0.25}  # some places have larger blocks
+BLOCK_SCALE_LARGE = {1.0: 0.4, 1.6: 0.35, 2.4: 0.25}  # and more of them where the frame shows many
+LARGE_FRAME = 200.0
 STREETS: Mapping[str, StreetOdds] = {
     "old_town": StreetOdds(
-        block=(30, 52), skew=0.16, warp=0.35, crossing=0.45,
-        width={"main": (9, 16), "street": (5.5, 9.5), "alley": (3.2, 5.5), "close": (3.5, 6)},
+        block=(33, 56), skew=0.16, warp=0.35, crossing=0.35,
+        width={"main": (8.5, 14), "street": (5.5, 9.5), "alley": (3.2, 5.5), "close": (3.5, 6)},
         surface={"asphalt": 0.72, "setts": 0.22, "concrete": 0.06},
         gutter=0.4, stone=0.8, verge=0.15, footway=0.96, footway_width=(1.2, 4.0),
         median=0.25, parking=0.6, marked=0.6, driveway_every=(25, 60),
@@ -103,7 +106,7 @@ STREETS: Mapping[str, StreetOdds] = {
         flush=0.1, flush_alley=0.5, bays=0.2, lots=0.6, closes=0.2,
     ),
     "car_park": StreetOdds(
-        block=(80, 125), skew=0.08, warp=0.2, crossing=0.3,
+        block=(62, 105), skew=0.08, warp=0.2, crossing=0.3,
         width={"main": (9, 17), "street": (6, 10), "alley": (4.5, 7), "close": (6, 9)},
         surface={"asphalt": 0.9, "concrete": 0.1},
         gutter=0.4, stone=0.7, verge=0.5, footway=0.6, footway_width=(1.4, 2.5),
@@ -136,9 +139,12 @@ def between(rng: np.random.Generator, span: Span) -> float:
 
 def pick(rng: np.random.Generator, odds: Mapping[T, float]) -> T:
     """A key of `odds`, drawn by weight."""
-    keys = list(odds)
-    weights = np.fromiter(odds.values(), dtype=float)
-    return keys[int(rng.choice(len(keys), p=weights / weights.sum()))]
+    left = rng.random() * sum(odds.values())
+    for key, weight in odds.items():
+        left -= weight
+        if left < 0:
+            return key
+    return key
 
 
 def pick_between(rng: np.random.Generator, odds: Mapping[Span, float]) -> float:

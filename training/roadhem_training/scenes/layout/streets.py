@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
+from dataclasses import replace
 
 import numpy as np
 import shapely
@@ -51,7 +52,8 @@ def _divide(rng: Rng, land: Polygon, depth: int, rules: StreetOdds, axes: list[A
         _close(rng, land, rules, axes)
         return
     middle = np.array(land.centroid.coords[0]) + (u / lu) * lu * rng.uniform(-0.14, 0.14)
-    rank = "main" if lu > 5 * rules.block[1] or depth < 1 else pick(rng, {"street": 0.8, "alley": 0.2})
+    main = 0.55 if lu > 5 * rules.block[1] or depth < 1 else 0.06
+    rank = "main" if chance(rng, main) else pick(rng, {"street": 0.8, "alley": 0.2})
     cuts = [_cut(land, middle, math.atan2(v[1], v[0]) + rng.normal(0, rules.skew))]
     if lv > rules.block[0] * 1.7 and chance(rng, rules.crossing):
         cuts.append(_cut(land, middle, math.atan2(u[1], u[0]) + rng.normal(0, rules.skew)))
@@ -88,7 +90,7 @@ def _bend(rng: Rng) -> Callable[[NDArray[np.float64]], NDArray[np.float64]]:
     waves = []
     for _ in range(3):
         length, angle = rng.uniform(90, 320), rng.uniform(0, 2 * math.pi)
-        strength = rng.uniform(0.1, 1.0) * (length / (2 * math.pi)) ** 2 / rng.uniform(60, 200)
+        strength = rng.uniform(0.1, 1.0) * (length / (2 * math.pi)) ** 2 / rng.uniform(40, 200)
         waves.append((length, angle, rng.uniform(0, 2 * math.pi), min(strength, 0.055 * length)))
 
     def bend(xy: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -191,6 +193,9 @@ def flush_edging(rng: Rng) -> Edging:
 def plan_town(rng: Rng, size: float, style: str) -> Plan:
     """Streets, junctions, islands, bays and lots of a town."""
     rules = odds.STREETS[style]
+    scale = pick(rng, odds.BLOCK_SCALE_LARGE if size > odds.LARGE_FRAME else odds.BLOCK_SCALE)
+    if not rules.in_block:
+        rules = replace(rules, block=(scale * rules.block[0], scale * rules.block[1]))
     window = box(-PLAN_REACH, -PLAN_REACH, size + PLAN_REACH, size + PLAN_REACH)
     plan = Plan(size, style, dress(rng, street_axes(rng, size, PLAN_REACH, rules), rules))
     plan.land, plan.driveway_every = odds.LAND[style], rules.driveway_every

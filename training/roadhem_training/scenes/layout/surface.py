@@ -9,7 +9,7 @@ from shapely.geometry.base import BaseGeometry
 from roadhem_training.scenes.layout.plan import Plan
 from roadhem_training.scenes.world import MARGIN
 
-PLAN_REACH = MARGIN + 25.0  # metres beyond the frame to which roads are planned
+PLAN_REACH = MARGIN + 16.0  # metres beyond the frame to which roads are planned
 GRID = 1e-4  # coordinates of the surface are rounded to this, metres, so that pieces fit without gaps
 CRACK = 0.002  # cracks thinner than twice this between pieces that should touch are closed, metres
 SMALLEST_HOLE = 0.4  # square metres; gaps below it are filled
