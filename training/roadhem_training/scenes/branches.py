@@ -12,6 +12,9 @@ from roadhem_training.scenes.world import Crown
 BARE_DENSITY = 0.36
 """Deciduous crowns thinner than this have no leaves."""
 
+MAIN_BRANCHES, FORKS, TURNS = 7, 3, (-0.45, 0.0, 0.45)
+"""Branches from the trunk, how often they part, and the turns (radians) of the three parts."""
+
 SUBPIXEL = 4
 """Bits of sub-pixel position handed to the line drawing."""
 
@@ -27,20 +30,18 @@ def skeleton(crown: Crown) -> NDArray[np.float64]:
     The same crown always gives the same branches.
     """
     rng = np.random.default_rng(np.abs([crown.x * 1000, crown.y * 1000, crown.radius * 1000]).astype(np.int64))
-    base = np.array([[crown.x, crown.y, 0.0], [crown.x, crown.y, 0.35 * crown.height]])
-    found, tips = [base], []
-    for heading in rng.uniform(0, 2 * np.pi) + np.arange(7) * 0.9:
-        tips.append((base[1], heading + rng.normal(0, 0.2), 0.42 * crown.radius, 0.2 * crown.height))
-    for _ in range(3):
-        grown = []
-        for start, heading, length, rise in tips:
-            step = np.array([np.cos(heading) * length, np.sin(heading) * length, rise])
-            end = start + step * rng.uniform(0.7, 1.2)
-            found.append(np.array([start, end]))
-            for turn in (-0.45, 0.0, 0.45):
-                grown.append((end, heading + turn + rng.normal(0, 0.25), length * 0.72, rise * 0.8))
-        tips = grown
-    return np.array(found)
+    fork = np.array([crown.x, crown.y, 0.35 * crown.height])
+    found = [np.stack([fork * (1, 1, 0), fork])[None]]
+    heading = rng.uniform(0, 2 * np.pi) + 0.9 * np.arange(MAIN_BRANCHES) + rng.normal(0, 0.2, MAIN_BRANCHES)
+    start, length, rise = np.tile(fork, (MAIN_BRANCHES, 1)), 0.42 * crown.radius, 0.2 * crown.height
+    for _ in range(FORKS):
+        step = np.stack([length * np.cos(heading), length * np.sin(heading), np.full(len(heading), rise)], axis=1)
+        end = start + step * rng.uniform(0.7, 1.2, (len(step), 1))
+        found.append(np.stack([start, end], axis=1))
+        start, heading = np.repeat(end, 3, axis=0), np.repeat(heading, 3) + np.tile(TURNS, len(heading))
+        heading = heading + rng.normal(0, 0.25, len(heading))
+        length, rise = 0.72 * length, 0.8 * rise
+    return np.concatenate(found)
 
 
 def draw_segments(

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import cv2
+import numba
 import numpy as np
 from numpy.typing import NDArray
 
@@ -79,7 +80,7 @@ def returns(light: NDArray[np.float32], pixel: float, rng: np.random.Generator) 
 
 
 def tone_curve(light: NDArray[np.float32], flight: Flight, rng: np.random.Generator) -> NDArray[np.float32]:
-    """Exposure, white balance, haze, gamma, contrast and saturation: light to 0..255 float32."""
+    """Exposure, white balance, haze, gamma, contrast and saturation: light to 0..255 float32, in place."""
     bright = float(np.percentile(light[::8, ::8, 1], BRIGHT_PERCENT))
     exposure = float(np.clip(rng.uniform(0.4, 0.85) / max(bright, 1e-3), 0.7, 3.5))
     warm, green = rng.normal(0, 0.035), rng.normal(0, 0.015)
@@ -93,11 +94,8 @@ def tone_curve(light: NDArray[np.float32], flight: Flight, rng: np.random.Genera
     table = 255 * ((np.clip(value, 0, None) ** (1 / gamma) - 0.5) * contrast + 0.5 + lift)
     knee = 255 - SHOULDER
     table = np.where(table > knee, knee + SHOULDER * np.tanh((table - knee) / SHOULDER), table).astype(np.float32)
-    index = np.clip(light * np.float32((GAMMA_STEPS - 1) / BRIGHTEST), 0, GAMMA_STEPS - 1).astype(np.uint16)
-    image = np.empty_like(light)
-    for k in range(3):
-        image[..., k] = table[index[..., k], k]
-    return cv2.transform(image, saturation_matrix(rng.uniform(0.45, 1.05)))
+    _look_up(light, table, saturation_matrix(rng.uniform(0.45, 1.05)))
+    return light
 
 
 def saturation_matrix(amount: float) -> NDArray[np.float32]:
@@ -198,3 +196,16 @@ def wedge(
         valid = ~side_of_line(valid.shape, rng, rng.uniform(0.45, 0.9))
         picture = np.where(valid[..., None], picture, np.uint8(0))
     return picture, valid
+
+
+@numba.njit(cache=True)
+def _look_up(light, table, matrix):  # type: ignore[no-untyped-def]
+    last = len(table) - 1
+    scale = np.float32(last / BRIGHTEST)
+    for r in range(light.shape[0]):
+        for c in range(light.shape[1]):
+            red = table[min(max(int(light[r, c, 0] * scale), 0), last), 0]
+            green = table[min(max(int(light[r, c, 1] * scale), 0), last), 1]
+            blue = table[min(max(int(light[r, c, 2] * scale), 0), last), 2]
+            for k in range(3):
+                light[r, c, k] = matrix[k, 0] * red + matrix[k, 1] * green + matrix[k, 2] * blue

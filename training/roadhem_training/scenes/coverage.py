@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+import math
+from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Any
 
 import numba
 import numpy as np
@@ -40,18 +41,18 @@ class Frame:
 
     def to_pixels(self, xy: ArrayLike) -> NDArray[np.float64]:
         """Local metres (..., 2) to (column, row) with (0, 0) the upper left corner of the first pixel."""
-        xy = np.asarray(xy, np.float64)
-        return np.stack([xy[..., 0] - self.left, self.top - xy[..., 1]], axis=-1) / self.pixel
+        corner, scale = (self.left, self.top), (1 / self.pixel, -1 / self.pixel)
+        return (np.asarray(xy, np.float64) - corner) * scale
 
-    def window(self, bounds: ArrayLike, grow: float = 0.0) -> tuple[slice, slice] | None:
+    def window(self, bounds: Sequence[float], grow: float = 0.0) -> tuple[slice, slice] | None:
         """Rows and columns that hold `bounds` (minx, miny, maxx, maxy) grown by `grow` metres; None if outside."""
-        minx, miny, maxx, maxy = np.asarray(bounds, np.float64)
-        if not np.isfinite(minx + miny + maxx + maxy):
+        minx, miny, maxx, maxy = bounds
+        if not math.isfinite(minx + miny + maxx + maxy):
             return None
-        c0 = max(int(np.floor((minx - grow - self.left) / self.pixel)), 0)
-        c1 = min(int(np.ceil((maxx + grow - self.left) / self.pixel)), self.cols)
-        r0 = max(int(np.floor((self.top - maxy - grow) / self.pixel)), 0)
-        r1 = min(int(np.ceil((self.top - miny + grow) / self.pixel)), self.rows)
+        c0 = max(math.floor((minx - grow - self.left) / self.pixel), 0)
+        c1 = min(math.ceil((maxx + grow - self.left) / self.pixel), self.cols)
+        r0 = max(math.floor((self.top - maxy - grow) / self.pixel), 0)
+        r1 = min(math.ceil((self.top - miny + grow) / self.pixel), self.rows)
         return (slice(r0, r1), slice(c0, c1)) if r1 > r0 and c1 > c0 else None
 
 
@@ -92,19 +93,17 @@ def polygon_rings(area: BaseGeometry) -> tuple[NDArray[np.float64], NDArray[np.i
     -------
     xy (n, 2), starts (m + 1,) offsets of the rings, signs (m,) +1 for outer rings and -1 for holes.
     """
-    rings, polygon = shapely.get_rings(np.atleast_1d(_polygons(area)), return_index=True)
+    if area.geom_type == "Polygon" and shapely.get_num_interior_rings(area) == 0:
+        xy = shapely.get_coordinates(area)
+        return xy, np.array([0, len(xy)]), np.ones(1)
+    parts = shapely.get_parts(area)
+    parts = parts[shapely.get_type_id(parts) == shapely.GeometryType.POLYGON]
+    rings, polygon = shapely.get_rings(parts, return_index=True)
     xy, ring = shapely.get_coordinates(rings, return_index=True)
     starts = np.searchsorted(ring, np.arange(len(rings) + 1))
-    signs = np.full(len(rings), -1.0)
-    signs[np.flatnonzero(np.diff(polygon, prepend=-1))] = 1.0
-    return xy, starts, signs
-
-
-def _polygons(area: BaseGeometry) -> Any:
-    if area.geom_type == "Polygon":
-        return area
-    parts = shapely.get_parts(area)
-    return parts[shapely.get_type_id(parts) == shapely.GeometryType.POLYGON]
+    outer = np.ones(len(rings), bool)
+    outer[1:] = polygon[1:] != polygon[:-1]
+    return xy, starts, np.where(outer, 1.0, -1.0)
 
 
 def cover_rings(

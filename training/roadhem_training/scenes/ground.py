@@ -159,28 +159,22 @@ def _raise(relief, cover, height):  # type: ignore[no-untyped-def]
 
 @numba.njit(cache=True)
 def _lay(image, cover, first, second, share, grain, pebble, spot, patch, drift, weights, rows, place):  # type: ignore[no-untyped-def]
-    height, width = cover.shape
+    zero, quarter, half, one = np.float32(0), np.float32(0.25), np.float32(0.5), np.float32(1)
+    base, spread = np.float32(1.6) * share, np.float32(0.35) * min(np.float32(3) * share, one)
     pixel = place[2]
-    for r in range(height):
-        y = place[1] - (r + np.float32(0.5)) * pixel
-        for c in range(width):
+    for r in range(cover.shape[0]):
+        y = place[1] - (np.float32(r) + half) * pixel
+        for c in range(cover.shape[1]):
             alpha = cover[r, c]
-            if alpha <= 0:
+            if alpha <= zero:
                 continue
-            mottle = pebble[r, c] * np.float32(0.25) + (spot[r, c] + patch[r, c]) * np.float32(0.5)
-            mix = share * np.float32(1.6) + np.float32(0.35) * mottle * min(share * 3, np.float32(1))
-            mix = min(max(mix, np.float32(0)), np.float32(1))
-            tone = (
-                1
-                + weights[0] * grain[r, c]
-                + weights[1] * pebble[r, c]
-                + weights[2] * spot[r, c]
-                + weights[3] * patch[r, c]
-                + weights[4] * drift[r, c]
-            )
+            mottle = quarter * pebble[r, c] + half * (spot[r, c] + patch[r, c])
+            mix = min(max(base + spread * mottle, zero), one)
+            tone = one + weights[0] * grain[r, c] + weights[1] * pebble[r, c]
+            tone += weights[2] * spot[r, c] + weights[3] * patch[r, c] + weights[4] * drift[r, c]
             if rows[0] > 0:
-                tone *= _unit_tone(place[0] + (c + np.float32(0.5)) * pixel, y, rows, pixel)
-            tone = max(tone, np.float32(0.25))
+                tone *= _unit_tone(place[0] + (np.float32(c) + half) * pixel, y, rows, pixel)
+            tone = max(tone, quarter)
             for k in range(3):
                 value = (first[k] + mix * (second[k] - first[k])) * tone
                 image[r, c, k] += alpha * (value - image[r, c, k])

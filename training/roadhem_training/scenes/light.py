@@ -175,9 +175,9 @@ def _bounds(window: tuple[slice, slice]) -> NDArray[np.int64]:
 def _light_up(image, dark, sky, colour):  # type: ignore[no-untyped-def]
     for r in range(image.shape[0]):
         for c in range(image.shape[1]):
-            direct = 1 - dark[r, c]
+            direct = np.float32(1) - dark[r, c]
             for k in range(3):
-                image[r, c, k] *= colour[k] * sky[r, c] + (1 - colour[k]) * direct
+                image[r, c, k] *= colour[k] * sky[r, c] + (np.float32(1) - colour[k]) * direct
 
 
 @numba.njit(cache=True)
