@@ -42,6 +42,10 @@ WAYS_OUT = {
 ENTRY_POINTS = "roadhem.commands"
 
 
+class Stopped(RoadhemError):
+    """Raised when the user ended a verb before it was done."""
+
+
 class Verbs(click.Group):
     """A group that imports a verb only when it is asked for."""
 
@@ -68,6 +72,13 @@ class Verbs(click.Group):
             near = difflib.get_close_matches(args[0].lower(), verbs, 1, 0.0)
             raise click.UsageError(f"There is no verb {args[0]}, the nearest is {near[0]}", ctx)
         return super().resolve_command(ctx, args)
+
+    def invoke(self, ctx: click.Context) -> object:
+        """Run the verb; an interruption is told as any other error, without click's empty line."""
+        try:
+            return super().invoke(ctx)
+        except KeyboardInterrupt:
+            raise Stopped("Stopped before it was done; what was there before is unchanged") from None
 
     def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
         """Write the overview without importing this package's verbs."""
@@ -107,8 +118,8 @@ def _tell(error: BaseException) -> int:
         return error.code if isinstance(error.code, int) else FAULTS
     if isinstance(error, click.exceptions.Exit):
         return error.exit_code
-    if isinstance(error, KeyboardInterrupt | click.Abort):
-        return _say("Stopped before it was done; what was there before is unchanged", FAULTS)
+    if isinstance(error, Stopped):
+        return _say(str(error), FAULTS)
     if isinstance(error, BrokenPipeError):
         return FAULTS
     if isinstance(error, click.ClickException):

@@ -7,7 +7,7 @@ from itertools import pairwise
 SPREAD_LIMITS_M = (0.03, 0.06, 0.12, 0.25)
 """Upper limits of the steps but the last."""
 
-SPREAD_COLOURS = ("#39d5ff", "#f7f35a", "#ff9f1c", "#e5322d", "#8d1bb5")
+SPREAD_COLOURS = ("#3fd0ff", "#fff48a", "#f58a07", "#cf1b2b", "#7316ad")
 """From sure to unsure."""
 
 CASING = "#101418"
@@ -17,6 +17,7 @@ INK = "#20262c"
 FAINT = "#6c747c"
 UNPLACED = "#ffffff"
 DOUBT = "#ffffff"
+LABEL = "#ffffff"
 
 
 def step_of(spread_m: float) -> int:
