@@ -2,12 +2,16 @@
 
 from __future__ import annotations
 
+import fcntl
 import json
 import os
+import pty
 import re
 import signal
+import struct
 import subprocess
 import sys
+import termios
 import time
 from collections.abc import Callable
 from pathlib import Path
@@ -131,9 +135,8 @@ def test_table_of_trace(place: Path) -> None:
 
 def test_bar_on_a_terminal(place: Path) -> None:
     """Should draw a bar on stderr when that is a terminal."""
-    import pty
-
     outer, inner = pty.openpty()
+    fcntl.ioctl(inner, termios.TIOCSWINSZ, struct.pack("HHHH", 24, 80, 0, 0))
     arguments = ["trace", "tile.tif", "--seeds", "seeds.gpkg", "--out", "o.gpkg", "--model", "model"]
     done = subprocess.run(
         [sys.executable, "-m", "roadhem.cli", *arguments], stdout=subprocess.PIPE, stderr=inner, check=False
