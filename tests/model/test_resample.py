@@ -120,6 +120,16 @@ def test_colour_plane_keeps_its_place(pixel: float) -> None:
     np.testing.assert_allclose(mosaic.read(ROW + 20, COL + 20, 60, 60).colour[1], expected, atol=1e-6)
 
 
+def test_rows_may_run_north() -> None:
+    """Should read a raster whose rows run from south to north like its mirror image."""
+    image = noise(50, 60)
+    upside = Affine(0.12, 0, EAST, 0, 0.12, NORTH - 50 * 0.12)
+    mirrored = mosaic_of(np.ascontiguousarray(image[:, ::-1]), upside).read(ROW - 3, COL - 3, 70, 80)
+    plain = mosaic_of(image, placed(0.12)).read(ROW - 3, COL - 3, 70, 80)
+    np.testing.assert_allclose(mirrored.colour, plain.colour, atol=1e-5)
+    np.testing.assert_array_equal(mirrored.cover, plain.cover)
+
+
 def test_half_pixels_are_averaged() -> None:
     """Should average 2 x 2 pixels of 5 cm imagery, as scikit-image's local mean does."""
     image = noise(80, 100)

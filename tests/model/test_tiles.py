@@ -36,9 +36,10 @@ def write(path: Path, array: NDArray[Any], transform: Affine | None = PLACE, **p
     interpretation: Sequence[ColorInterp] | None = profile.pop("colorinterp", None)
     mask: NDArray[np.bool_] | None = profile.pop("mask", None)
     given = {"driver": "GTiff", "crs": CRS, "count": bands, "height": rows, "width": cols, "dtype": array.dtype.name}
-    with rasterio.Env(GDAL_TIFF_INTERNAL_MASK=True), rasterio.open(
-        path, "w", **(given | {"transform": transform} | profile)
-    ) as sink:
+    with (
+        rasterio.Env(GDAL_TIFF_INTERNAL_MASK=True),
+        rasterio.open(path, "w", **(given | {"transform": transform} | profile)) as sink,
+    ):
         if interpretation:
             sink.colorinterp = interpretation
         sink.write(array)
@@ -430,12 +431,12 @@ def test_png_without_world_file_is_refused(tmp_path: Path) -> None:
         Mosaic.open([path], crs=CRS)
 
 
-@pytest.mark.parametrize(("driver", "suffix"), [("PNG", "png"), ("JP2OpenJPEG", "jp2")])
+@pytest.mark.parametrize(("driver", "suffix"), [("PNG", "png"), ("JPEG", "jpg"), ("JP2OpenJPEG", "jp2")])
 def test_truncated_images_are_refused(tmp_path: Path, driver: str, suffix: str) -> None:
     """Should refuse other formats that are cut short."""
     path = write(tmp_path / f"a.{suffix}", picture(300, 300), driver=driver)
     path.write_bytes(path.read_bytes()[: path.stat().st_size // 2])
-    with pytest.raises(BadInput, match=r"is damaged|no raster that can be read"):
+    with pytest.raises(BadInput, match=r"cannot be read in places|no raster that can be read|cut short"):
         Mosaic.open([path], crs=CRS)
 
 

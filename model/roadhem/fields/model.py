@@ -6,7 +6,7 @@ import hashlib
 import json
 import os
 from dataclasses import dataclass, field
-from functools import cached_property
+from functools import cache, cached_property
 from importlib import resources
 from pathlib import Path
 from typing import Any
@@ -89,11 +89,13 @@ class Model:
 
     def session(self, rows: int, cols: int, threads: int) -> onnxruntime.InferenceSession:
         """Return a session for inputs of (1, 6, rows, cols)."""
+        _share_arena()
         options = onnxruntime.SessionOptions()
         options.intra_op_num_threads = threads
         options.inter_op_num_threads = 1
         options.execution_mode = onnxruntime.ExecutionMode.ORT_SEQUENTIAL
         options.add_session_config_entry("session.intra_op.allow_spinning", "0")
+        options.add_session_config_entry("session.use_env_allocators", "1")
         options.add_free_dimension_override_by_name("height", rows)
         options.add_free_dimension_override_by_name("width", cols)
         options.log_severity_level = 4
@@ -117,6 +119,14 @@ class Model:
             raise BadInput(f"The model {self.name} is not a Roadhem net; name another model.") from error
         if fields.shape != (1, len(NET_FIELDS), STRIDE // NET_STRIDE, STRIDE // NET_STRIDE):
             raise BadInput(f"The model {self.name} gives other fields than Roadhem traces; name another model.")
+
+
+@cache
+def _share_arena() -> None:
+    """Let all sessions of the process draw on one arena: a session for each shape of block costs no memory then."""
+    kind, use = onnxruntime.OrtAllocatorType.ORT_ARENA_ALLOCATOR, onnxruntime.OrtMemType.DEFAULT
+    defaults = onnxruntime.OrtArenaCfg(0, -1, -1, -1)
+    onnxruntime.create_and_register_allocator(onnxruntime.OrtMemoryInfo("Cpu", kind, 0, use), defaults)
 
 
 def shelf_home() -> Path:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import threading
 import warnings
 from collections import OrderedDict
@@ -20,6 +21,9 @@ CACHE_BYTES = 128 * 2**20
 
 OPEN_FILES = 48
 """Datasets a thread keeps open."""
+
+JPEG_TAIL = 4096
+"""Bytes at the end of a JPEG in which its end marker must stand."""
 
 Stamp = tuple[str, int, int]
 """Path, time of change and size: a file written anew is opened anew."""
@@ -77,7 +81,9 @@ def stamp_of(path: Path) -> Stamp:
     with dataset(stamp) as source:
         if source.count == 0:
             raise BadInput(f"{path.name} holds no image of its own; name one of the rasters inside it.")
-        if source.driver in ("GTiff", "COG") and _reach(source) > status.st_size:
+        if (source.driver == "GTiff" and _reach(source) > status.st_size) or (
+            source.driver == "JPEG" and not _ends_as_jpeg(path)
+        ):
             raise BadInput(f"{path.name} is cut short; copy or export it again.")
     return stamp
 
@@ -92,6 +98,13 @@ def _reach(source: DatasetReader) -> int:
             if offset and length:
                 reach = max(reach, int(offset) + int(length))
     return reach
+
+
+def _ends_as_jpeg(path: Path) -> bool:
+    """Tell whether the marker that ends a JPEG stands at its end, padding aside; its reader does not miss it."""
+    with path.open("rb") as file:
+        file.seek(-min(JPEG_TAIL, path.stat().st_size), os.SEEK_END)
+        return b"\xff\xd9" in file.read()
 
 
 def _band_by_band(source: DatasetReader) -> bool:

@@ -67,7 +67,7 @@ class RasterTile(Tile):
         return values, valid
 
     def _note(self) -> None:
-        fault = f"{self.name} is damaged in places; copy or export it again."
+        fault = f"{self.name} cannot be read in places; copy or export it again."
         if fault not in self.faults:
             self.faults.append(fault)
 
