@@ -325,6 +325,17 @@ def test_heights_in_feet(tmp_path: Path, unit: str, metres: float) -> None:
     np.testing.assert_allclose(patch.height, 100 * metres, rtol=1e-7)
 
 
+def test_heights_of_unknown_unit_are_told(tmp_path: Path) -> None:
+    """Should say that heights are taken as metres where the CRS is in feet and their band names no unit."""
+    place = Affine(0.3, 0, 1_000_000, 0, -0.3, 200_000)
+    tile = write(tmp_path / "a.tif", picture(), place, crs="EPSG:2263")
+    height = write(tmp_path / "h.tif", np.full((1, 64, 96), 100, np.float32), place, crs="EPSG:2263")
+    assert any("taken as metres" in warning for warning in Mosaic.open([tile], [height]).warnings)
+    with rasterio.open(height, "r+") as source:
+        source.units = ["ft"]
+    assert not Mosaic.open([tile], [height]).warnings
+
+
 def test_heights_with_a_vertical_crs(tmp_path: Path) -> None:
     """Should take heights in the tiles' CRS with a vertical part added."""
     path = write(tmp_path / "h.tif", np.full((1, 64, 96), 3, np.float32), crs="EPSG:25832+7837")

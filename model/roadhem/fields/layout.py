@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from roadhem.tiles.grid import PIXEL_M
+from roadhem.tiles.grid import NO_DATA, OUTSIDE, PIXEL_M, VALID
 
 NET_STRIDE = 2
 """Working pixels per field cell."""
@@ -34,7 +34,7 @@ NET_FIELDS = (
 
 COVER = len(NET_FIELDS)
 """Index of the extra channel that says what the tiles hold there: one of the COVER_ codes."""
-COVER_OUTSIDE, COVER_NO_DATA, COVER_VALID = 0, 1, 2
+COVER_OUTSIDE, COVER_NO_DATA, COVER_VALID = OUTSIDE, NO_DATA, VALID
 
 CHANNELS = len(NET_FIELDS) + 1
 

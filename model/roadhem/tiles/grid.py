@@ -11,6 +11,9 @@ from numpy.typing import ArrayLike, NDArray
 PIXEL_M = 0.10
 """Side of a working pixel, in ground metres."""
 
+OUTSIDE, NO_DATA, VALID = 0, 1, 2
+"""Cover: what the tiles hold at a pixel."""
+
 SCALE_STEP = 1.01
 """Scale factors are rounded to powers of this, so that a neighbouring tile does not shift the grid."""
 

@@ -24,10 +24,16 @@ UNITS_M = {
 
 @dataclass(kw_only=True, eq=False)
 class HeightTile(RasterTile):
-    """A height raster: metres are values times `factor` plus `base`."""
+    """A height raster: metres are values times `factor` plus `base`.
+
+    Attributes
+    ----------
+    unit_stated : whether the file says what its heights are measured in; metres if not.
+    """
 
     factor: float
     base: float
+    unit_stated: bool
 
     def read(self, row: int, col: int, rows: int, cols: int) -> Pixels:
         """Read heights in metres, float32; the window lies inside the raster."""
@@ -53,22 +59,24 @@ def open_height(path: Path, crs: CRS | None) -> HeightTile:
     with dataset(stamp) as source:
         real_type(source, (1,), path.name)
         place, own_crs = located(source, path.name, crs)
-        unit = _unit_m(source)
+        stated = _unit_m(source)
+        unit = stated or 1.0
         tile = HeightTile(
             name=path.name, path=path, stamp=stamp, crs=own_crs, transform=place, height=source.height,
             width=source.width, planes=1, eight_bit=False, bands=(1,), masked=has_mask(source),
             nodata=source.nodata, factor=source.scales[0] * unit, base=source.offsets[0] * unit,
+            unit_stated=stated is not None,
         )  # fmt: skip
     probe(tile)
     return tile
 
 
-def _unit_m(source: DatasetReader) -> float:
-    """Length of the unit of heights: the band's, else that of the CRS's vertical part, else a metre."""
+def _unit_m(source: DatasetReader) -> float | None:
+    """Length of the unit of heights: the band's, else that of the CRS's vertical part, else unknown."""
     name = (source.units[0] or "").strip().lower()
     if name in UNITS_M:
         return UNITS_M[name]
     crs = CRS.from_wkt(source.crs.to_wkt()) if source.crs else None
     if crs is not None and len(crs.axis_info) == 3:
         return float(crs.axis_info[2].unit_conversion_factor)
-    return 1.0
+    return None

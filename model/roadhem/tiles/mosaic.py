@@ -12,9 +12,8 @@ from numpy.typing import NDArray
 from pyproj import CRS
 
 from roadhem.errors import BadInput
-from roadhem.tiles.grid import PIXEL_M, WorkingGrid
-from roadhem.tiles.height import open_height
-from roadhem.tiles.resample import VALID
+from roadhem.tiles.grid import PIXEL_M, VALID, WorkingGrid
+from roadhem.tiles.height import HeightTile, open_height
 from roadhem.tiles.scale import metres_per_unit, point_scale, read_crs
 from roadhem.tiles.sheet import Stack, pixel_boxes
 from roadhem.tiles.source import open_tile
@@ -217,3 +216,5 @@ def _check_height(raster: Tile, tiles: Sequence[Tile], warnings: list[str]) -> N
     raster.pixel_m = _ground_side(raster)
     if raster.pixel_m > HEIGHT_COARSE_M:
         warnings.append(f"{raster.name} has cells of {raster.pixel_m:.2f} m; curbs do not show in it.")
+    if isinstance(raster, HeightTile) and not raster.unit_stated and metres_per_unit(raster.crs) != 1.0:
+        warnings.append(f"{raster.name} does not say its unit; its heights are taken as metres.")

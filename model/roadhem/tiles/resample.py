@@ -8,8 +8,7 @@ import numpy as np
 from numba import njit
 from numpy.typing import NDArray
 
-OUTSIDE, NO_DATA, VALID = 0, 1, 2
-"""Cover: what the tiles hold at a pixel."""
+from roadhem.tiles.grid import NO_DATA, OUTSIDE, VALID
 
 SNAP = 1e-6
 """Share of a pixel below which an overlap or a shift counts as none."""

@@ -7,9 +7,9 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
-from roadhem.tiles.grid import WorkingGrid
+from roadhem.tiles.grid import NO_DATA, OUTSIDE, VALID, WorkingGrid
 from roadhem.tiles.lattice import Lattice
-from roadhem.tiles.resample import NO_DATA, OUTSIDE, VALID, Taps, Turn, axis_taps, separable, settle, turned
+from roadhem.tiles.resample import Taps, Turn, axis_taps, separable, settle, turned
 from roadhem.tiles.tile import Tile
 
 READ_PIXELS = 24_000_000
