@@ -68,6 +68,9 @@ class MadeSession:
         assert page is not None
         return page
 
+    def warm(self, places: NDArray[np.float64]) -> None:
+        """Nothing to do: drawn fields are at hand."""
+
     def trace(self, points: NDArray[np.float64]) -> Trace | Unplaced:
         """The real tracer."""
         self.traced += 1

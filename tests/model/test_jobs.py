@@ -144,6 +144,16 @@ def test_resume_refuses_another_job(job: TraceJob) -> None:
     assert trace_tiles(job, open_made, silent).lines == STREETS
 
 
+def test_two_runs_do_not_share_an_output(job: TraceJob) -> None:
+    """Should refuse to write what another run is writing, and leave that run's journal alone."""
+    with Journal(job.out, "first", resume=False) as journal:
+        with pytest.raises(BadInput, match="Another run is writing"):
+            trace_tiles(job, open_made, silent)
+        journal.add({"1": Unplaced("nothing")})
+        assert journal.path.read_text().count("\n") == 2
+    assert sorted(os.listdir(job.out.parent)) == ["out.gpkg.journal", "seeds.gpkg"]
+
+
 def test_resume_refuses_a_damaged_journal(job: TraceJob) -> None:
     """Should refuse a journal that is none."""
     Path(f"{job.out}.journal").write_text("milk\n")

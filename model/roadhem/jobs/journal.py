@@ -9,6 +9,7 @@ from types import TracebackType
 from typing import Any, TextIO
 
 import numpy as np
+from filelock import FileLock, Timeout
 from numpy.typing import NDArray
 
 from roadhem.errors import BadInput, RoadhemError
@@ -26,19 +27,36 @@ class Journal:
 
     Raises
     ------
-    BadInput : `resume` and the journal there belongs to another job.
+    BadInput : another run has the same output, or `resume` and the journal there belongs to another job.
     """
 
     def __init__(self, target: Path, job: str, resume: bool) -> None:
         self.path = target.with_name(target.name + ".journal")
         self.done: dict[str, Trace | Unplaced] = {}
+        self._lock = FileLock(target.with_name(target.name + ".lock"), timeout=0)
+        try:
+            self._lock.acquire()
+        except Timeout:
+            raise BadInput(f"Another run is writing {target}; wait for it or name another file") from None
+        try:
+            self._stream = self._open(job, resume)
+        except BaseException:
+            self._unlock()
+            raise
+
+    def _open(self, job: str, resume: bool) -> TextIO:
         keep = self._read(job) if resume and self.path.exists() else 0
-        self._stream: TextIO = self.path.open("r+" if keep else "w", encoding="utf-8", newline="\n")
+        stream = self.path.open("r+" if keep else "w", encoding="utf-8", newline="\n")
         if keep:
-            self._stream.truncate(keep)
-            self._stream.seek(keep)
+            stream.truncate(keep)
+            stream.seek(keep)
         else:
-            self._write([{"job": job}])
+            _write(stream, self.path, [{"job": job}])
+        return stream
+
+    def _unlock(self) -> None:
+        self._lock.release()
+        Path(self._lock.lock_file).unlink(missing_ok=True)
 
     def __enter__(self) -> Journal:
         return self
@@ -47,26 +65,18 @@ class Journal:
         self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
     ) -> None:
         self._stream.close()
+        self._unlock()
 
     def add(self, outcomes: dict[str, Trace | Unplaced]) -> None:
         """Append what became of some seeds, on disk before this returns."""
         self.done.update(outcomes)
-        self._write([{"seed": seed_id, **packed(outcome)} for seed_id, outcome in outcomes.items()])
+        entries = [{"seed": seed_id, **packed(outcome)} for seed_id, outcome in outcomes.items()]
+        _write(self._stream, self.path, entries)
 
     def remove(self) -> None:
         """Delete the journal: the output is there."""
         self._stream.close()
         self.path.unlink(missing_ok=True)
-
-    def _write(self, entries: list[dict[str, Any]]) -> None:
-        try:
-            self._stream.write("".join(json.dumps(entry) + "\n" for entry in entries))
-            self._stream.flush()
-            os.fsync(self._stream.fileno())
-        except OSError as error:
-            raise RoadhemError(
-                f"{self.path} could not be written ({error.strerror}); free space and --resume"
-            ) from error
 
     def _read(self, job: str) -> int:
         """Take over whole lines; return up to which byte they go (a last line cut short is dropped)."""
@@ -88,6 +98,15 @@ class Journal:
                 raise
             raise BadInput(f"{self.path} is damaged; delete it or run without --resume") from error
         return len(good)
+
+
+def _write(stream: TextIO, path: Path, entries: list[dict[str, Any]]) -> None:
+    try:
+        stream.write("".join(json.dumps(entry) + "\n" for entry in entries))
+        stream.flush()
+        os.fsync(stream.fileno())
+    except OSError as error:
+        raise RoadhemError(f"{path} could not be written ({error.strerror}); free space and --resume") from error
 
 
 def packed(outcome: Trace | Unplaced) -> dict[str, Any]:

@@ -72,6 +72,9 @@ class Session(Protocol):
     def fields(self, p: int, q: int) -> NDArray[np.int16]:
         """Return a page of fields, (256, 256, CHANNELS)."""
 
+    def warm(self, places: NDArray[np.float64]) -> None:
+        """Compute the fields around places (n, 2) in grid metres at once, reading ahead while the net works."""
+
     def trace(self, points: NDArray[np.float64]) -> Trace | Unplaced:
         """Trace from points (n, 2) in grid metres: the seed, then those to pass through."""
 
@@ -146,6 +149,10 @@ class TilesSession:
     def fields(self, p: int, q: int) -> NDArray[np.int16]:
         """Return a page of fields."""
         return self.store.page(p, q)
+
+    def warm(self, places: NDArray[np.float64]) -> None:
+        """Compute the fields around places at once."""
+        self.store.load({page_of(float(x), float(y)) for x, y in places})
 
     def trace(self, points: NDArray[np.float64]) -> Trace | Unplaced:
         """Trace from points."""

@@ -78,6 +78,7 @@ def _chunks(tasks: Sequence[Task]) -> list[Sequence[Task]]:
 
 def _trace_chunk(session: Session, chunk: Sequence[Task]) -> Batch:
     before = session.computed_pixels()
+    session.warm(np.concatenate([points for _, points in chunk]))
     outcomes = {seed_id: _trace_one(session, points) for seed_id, points in chunk}
     return Batch(outcomes, session.computed_pixels() - before, tuple(session.faults))
 

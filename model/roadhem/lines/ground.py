@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import numpy as np
 import pyproj
-import shapely
 from numpy.typing import ArrayLike, NDArray
 from pyproj.exceptions import CRSError, ProjError
 
@@ -54,7 +53,3 @@ class Ground:
         up = self.step_m([(x, y - half), (x, y + half)])[0]
         return float((across + up) / (4 * half))
 
-
-def total_bounds(geometry: NDArray[np.object_]) -> NDArray[np.float64]:
-    """Bounds of all geometries together, (4,)."""
-    return np.asarray(shapely.total_bounds(geometry))
