@@ -12,14 +12,16 @@ from shapely.geometry import Polygon
 from roadhem_training.scenes.layout import odds
 from roadhem_training.scenes.layout.alignment import Offset, quad_segments
 from roadhem_training.scenes.layout.junctions import closing
-from roadhem_training.scenes.layout.odds import between, chance, pick
+from roadhem_training.scenes.layout.odds import Span, between, chance, pick
+from roadhem_training.scenes.layout.overlay import joined, polygons, shared
 from roadhem_training.scenes.layout.plan import Change, Edging, Island, Part, Plan, Road
-from roadhem_training.scenes.layout.surface import polygons
+from roadhem_training.scenes.world import Cover
 
 Rng = np.random.Generator
 
 BAY_DEPTH = (2.0, 2.6)
 CROSSWISE_DEPTH = (4.8, 5.5)
+STALL_WIDE, STALL_LONG, STALL_LINES = (2.3, 2.7), (5.0, 6.2), 0.5
 BUS_BAY_DEPTH, BUS_BAY_LENGTH = (2.6, 3.2), (14.0, 30.0)
 TAPER = {"bay": (0.0, 2.5), "bus": (6.0, 14.0), "turn": (8.0, 20.0)}
 TURN_LANE = (2.75, 3.3)
@@ -52,7 +54,8 @@ def _parking(rng: Rng, plan: Plan, k: int, side: int, a: float, b: float) -> Non
         return
     road = plan.roads[k]
     edging = road.left if side > 0 else road.right
-    depth = between(rng, CROSSWISE_DEPTH if chance(rng, 0.25) else BAY_DEPTH)
+    crosswise = chance(rng, 0.25)
+    depth = between(rng, CROSSWISE_DEPTH if crosswise else BAY_DEPTH)
     if chance(rng, 0.5):
         material = pick(rng, {"setts": 0.35, "pavers": 0.4, "gravel": 0.1, "concrete": 0.15})
         flush = Edging("flush", 0.0, stone=edging.stone if chance(rng, 0.5) else 0.0, verge=depth,
@@ -60,10 +63,23 @@ def _parking(rng: Rng, plan: Plan, k: int, side: int, a: float, b: float) -> Non
                        stone_material=edging.stone_material, stone_tone=edging.stone_tone)  # fmt: skip
         plan.changes.append(Change(k, side, s0, s1, flush, "flush_bay"))
     else:
-        own = chance(rng, 0.7)
-        material = road.material if own else pick(rng, {"asphalt": 0.6, "concrete": 0.4})
         area = _widening(road, side, s0, s1, depth, between(rng, TAPER["bay"]))
-        plan.parts.append(Part(area, edging, material, road.tone + (0.0 if own else 0.4), "bay"))
+        tone = road.tone + (0.0 if chance(rng, 0.7) else 0.4)
+        plan.parts.append(Part(area, edging, road.material, tone, "cross_bay" if crosswise else "bay"))
+    _stall_lines(rng, plan, road, side, (s0, s1), depth, crosswise)
+
+
+def _stall_lines(
+    rng: Rng, plan: Plan, road: Road, side: int, span: Span, depth: float, crosswise: bool
+) -> None:
+    """Lines or darker rows of stones between the stalls of a bay."""
+    every = between(rng, STALL_WIDE if crosswise else STALL_LONG)
+    s = np.arange(span[0] + 1.0, span[1] - 1.0, every)
+    same = np.ones(len(s))
+    near, far = sorted((side * (road.half + 0.1), side * (road.half + depth - 0.1)))
+    lines = road.axis.cells(s, s + 0.1, near * same, far * same)
+    if chance(rng, STALL_LINES) and len(s):
+        plan.covers.append(Cover(lines, pick(rng, {"snow": 0.7, "setts": 0.3}), rng.uniform(-0.4, 0.0)))
 
 
 def _bus(rng: Rng, plan: Plan, k: int, side: int, a: float, b: float) -> None:
@@ -74,7 +90,7 @@ def _bus(rng: Rng, plan: Plan, k: int, side: int, a: float, b: float) -> None:
         return
     road = plan.roads[k]
     area = _widening(road, side, s0, s1, between(rng, BUS_BAY_DEPTH), taper)
-    material = pick(rng, {road.material: 0.6, "concrete": 0.4})
+    material = pick(rng, {road.material: 0.75, "concrete": 0.25})
     plan.parts.append(Part(area, road.left if side > 0 else road.right, material, road.tone, "bus_bay"))
 
 
@@ -97,7 +113,7 @@ def _turn(rng: Rng, plan: Plan, k: int, side: int, a: float, b: float) -> None:
     plan.parts.append(Part(area, road.left if side > 0 else road.right, road.material, road.tone, "turn_lane"))
     others = [r.area for j, r in enumerate(plan.roads) if j != k]
     end = shapely.Point(road.axis.at(s1 if side < 0 else s0, side * (road.half + wide))).buffer(12)
-    near_by = shapely.union_all([area, road.area, *others]).intersection(end)
+    near_by = shared(joined([area, road.area, *others]), end)
     for piece in closing(near_by, rng.uniform(0.5, 4.0)):
         if piece.intersection(end.boundary).is_empty:
             plan.parts.append(Part(piece, road.left, road.material, road.tone, "turn_lane"))
@@ -167,6 +183,6 @@ def _head(rng: Rng, plan: Plan, road: Road, s: float, sign: int) -> None:
         length, wide = (between(rng, span) for span in HAMMER)
         back = s - sign * wide
         head = road.axis.strip(*sorted((max(0.0, back), s)), -0.5 * length, 0.5 * length)
-    pieces = [head, *closing(shapely.union(head, tail), rng.uniform(2, 9))]
-    for piece in polygons(shapely.union_all(pieces)):
+    pieces = [head, *closing(joined([head, tail]), rng.uniform(2, 9))]
+    for piece in polygons(joined(pieces)):
         plan.parts.append(Part(piece, road.left, road.material, road.tone, "head"))

@@ -8,8 +8,8 @@ import shapely
 from shapely.geometry import LineString, MultiPolygon
 from shapely.geometry.base import BaseGeometry
 
+from roadhem_training.scenes.layout.overlay import joined, shared
 from roadhem_training.scenes.layout.stretches import Stretch
-from roadhem_training.scenes.layout.surface import polygons
 from roadhem_training.scenes.world import Cover, OtherLine
 
 GUTTER_TONE, WALK_TONE = 0.15, 0.1
@@ -22,9 +22,9 @@ def beside(stretch: Stretch, distance: float) -> list[LineString]:
     return [g for g in shapely.get_parts(found) if isinstance(g, LineString) and g.length > LEAST_LINE]
 
 
-def band(stretch: Stretch, far: float, within: BaseGeometry) -> BaseGeometry:
+def band(stretch: Stretch, far: float, within: BaseGeometry) -> MultiPolygon:
     """Area `within`, up to `far` metres from the stretch, cut square at its ends."""
-    return shapely.intersection(stretch.line.buffer(far, cap_style="flat", quad_segs=6), within)
+    return shared(stretch.line.buffer(far, cap_style="flat", quad_segs=6), within)
 
 
 def other_lines(stretch: Stretch) -> list[OtherLine]:
@@ -45,9 +45,9 @@ def other_lines(stretch: Stretch) -> list[OtherLine]:
 def _merged(areas: dict[tuple[str, float, float], list[BaseGeometry]]) -> list[Cover]:
     out = []
     for (material, tone, relief), pieces in areas.items():
-        found = polygons(shapely.union_all(pieces))
-        if found:
-            out.append(Cover(MultiPolygon(found), material, tone, relief=relief))
+        area = joined(pieces)
+        if not area.is_empty:
+            out.append(Cover(area, material, tone, relief=relief))
     return out
 
 

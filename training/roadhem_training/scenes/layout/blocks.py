@@ -10,9 +10,9 @@ from shapely.geometry import LineString, Polygon
 from shapely.geometry.base import BaseGeometry
 
 from roadhem_training.scenes.layout.odds import between, chance, pick
+from roadhem_training.scenes.layout.overlay import inset, less, polygons, shared
 from roadhem_training.scenes.layout.shapes import oriented_box
 from roadhem_training.scenes.layout.stretches import OpenChain, Stretch
-from roadhem_training.scenes.layout.surface import polygons
 from roadhem_training.scenes.world import Body, OtherLine
 
 ROOFS = {"flat": 0.35, "gable": 0.45, "hip": 0.2}
@@ -43,15 +43,15 @@ def _perimeter(rng: np.random.Generator, plot: Polygon, front: list[Stretch]) ->
     """Houses wall to wall along the street, a court behind."""
     depth = between(rng, PERIMETER_DEPTH)
     out: list[Body] = []
-    for piece in polygons(plot.buffer(-rng.uniform(0.05, 1.0), join_style="mitre")):
-        ring = piece.difference(piece.buffer(-depth, join_style="mitre"))
+    for piece in inset(plot, rng.uniform(0.05, 1.0)).geoms:
+        ring = less(piece, inset(piece, depth))
         chain = OpenChain(LineString(piece.simplify(0.05).exterior))
         at = 0.0
         while at < chain.length - 2:
             end = min(at + between(rng, PERIMETER_WIDTH), chain.length)
             strip = chain.piece(at, end).buffer(depth + 0.01, cap_style="flat", join_style="mitre")
-            house = max(polygons(strip.intersection(ring)), key=lambda g: g.area, default=Polygon())
-            ring = ring.difference(strip)
+            house = max(shared(strip, ring).geoms, key=lambda g: g.area, default=Polygon())
+            ring = less(ring, strip)
             if house.area > 20 and not chance(rng, 0.08):
                 d = chain.frame(0.5 * (at + end))[1]
                 out.append(_house(rng, house, between(rng, PERIMETER_HEIGHT), math.atan2(d[1], d[0])))
@@ -114,7 +114,7 @@ def enclosure(rng: np.random.Generator, use: str, plot: BaseGeometry) -> tuple[l
         return bodies, lines
     what = pick(rng, {"wall": 0.3, "fence": 0.35, "hedge": 0.35})
     thick, top = THICKNESS[what], between(rng, (0.8, 2.0))
-    for piece in polygons(plot.buffer(-0.5 * thick - 0.1, join_style="mitre")):
+    for piece in inset(plot, 0.5 * thick + 0.1).geoms:
         chain, at = OpenChain(LineString(piece.exterior)), 0.0
         while at < chain.length - 3:
             run = min(rng.uniform(6, 30), chain.length - at)

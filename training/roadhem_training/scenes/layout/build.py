@@ -15,10 +15,11 @@ from roadhem_training.scenes.layout.country import plan_country
 from roadhem_training.scenes.layout.motorway import plan_motorway
 from roadhem_training.scenes.layout.odds import STYLE_ODDS, pick
 from roadhem_training.scenes.layout.open_land import plan_open_land
+from roadhem_training.scenes.layout.overlay import less
 from roadhem_training.scenes.layout.plan import Plan
 from roadhem_training.scenes.layout.streets import plan_town
 from roadhem_training.scenes.layout.stretches import Stretch, boundary_stretches
-from roadhem_training.scenes.layout.surface import polygons, unite
+from roadhem_training.scenes.layout.surface import unite
 from roadhem_training.scenes.world import MARGIN, Cover, TrueEdge, World
 
 Rng = np.random.Generator
@@ -72,7 +73,7 @@ def _furnish(rng: Rng, plan: Plan, world: World, surface: MultiPolygon) -> None:
     world.edges = [TrueEdge(p.line, p.edging.kind, p.edging.height) for p in pieces]
     world.others = [line for piece in pieces for line in bands.other_lines(piece)] + plan.lines
     frame = box(-MARGIN, -MARGIN, plan.size + MARGIN, plan.size + MARGIN)
-    faces = plan.parcels or polygons(frame.difference(surface))
+    faces = plan.parcels or list(less(frame, surface).geoms)
     season = trees.Season(rng)
     world.ground.append(Cover(frame, "soil"))
     for face, front in zip(faces, _fronts(faces, pieces), strict=True):

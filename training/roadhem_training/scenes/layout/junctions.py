@@ -12,6 +12,7 @@ from shapely.geometry.base import BaseGeometry
 from roadhem_training.scenes.layout import odds
 from roadhem_training.scenes.layout.alignment import quad_segments
 from roadhem_training.scenes.layout.odds import between, chance, pick, pick_between
+from roadhem_training.scenes.layout.overlay import joined, less
 from roadhem_training.scenes.layout.plan import Edging, Island, Junction, Leg, Road
 from roadhem_training.scenes.layout.surface import GRID
 
@@ -109,7 +110,7 @@ def _crossing(
         radii.append(radius)
         if radius > 0.05:
             arms = [_arm(roads[g.road], g, max(bare) + tangent + 3.0) for g in (leg, legs[m])]
-            corners += closing(shapely.union_all(arms), radius)
+            corners += closing(joined(arms), radius)
             if slip:
                 islands += _slip_island(rng, corners[-1], arms, roads[leg.road].left)
     legs = [Leg(g.road, g.station, g.sign, g.heading, max(r, 0.0)) for g, r in zip(legs, reach, strict=True)]
@@ -120,16 +121,16 @@ def closing(shape: BaseGeometry, radius: float) -> list[Polygon]:
     """The slivers that round the inner corners of `shape` with arcs of `radius`."""
     shape = shapely.set_precision(shape, GRID)
     closed = shape.buffer(radius, join_style="mitre").buffer(-radius, quad_segs=quad_segments(radius))
-    pieces = shapely.get_parts(shapely.difference(closed, shape))
-    return [p for p in pieces if isinstance(p, Polygon) and p.area > max(1e-3, 0.01 * radius * radius)]
+    return [p for p in less(closed, shape).geoms if p.area > max(1e-3, 0.01 * radius * radius)]
 
 
 def _slip_island(
     rng: np.random.Generator, corner: Polygon, arms: list[Polygon], edging: Edging
 ) -> list[Island]:
     """The triangle between a turning lane along the arc of `corner` and the two roads."""
-    arc = shapely.difference(corner.exterior, shapely.union_all(arms).buffer(0.02))
-    rest = corner.difference(arc.buffer(between(rng, SLIP_WIDTH))).difference(shapely.union_all(arms).buffer(0.3))
+    roads = joined(arms)
+    arc = shapely.difference(corner.exterior, roads.buffer(0.02))
+    rest = less(corner, joined([arc.buffer(between(rng, SLIP_WIDTH)), roads.buffer(0.3)]))
     nose = rng.uniform(0.3, 0.9)
     area = rest.buffer(-nose).buffer(nose, quad_segs=16)
     fill = pick(rng, odds.ISLAND_FILL)
@@ -144,8 +145,8 @@ def _roundabout(
     entry = rng.uniform(4, 14)
     disc = shapely.Point(x, y).buffer(outer, quad_segs=quad_segments(outer))
     reach = outer + entry + 3.0
-    arms = shapely.union_all([_arm(roads[leg.road], leg, reach + 6.0) for leg in legs])
-    corners = [disc, *closing(shapely.union(disc, arms), entry)]
+    arms = joined([_arm(roads[leg.road], leg, reach + 6.0) for leg in legs])
+    corners = [disc, *closing(joined([disc, arms]), entry)]
     edging = roads[legs[0].road].left
     apron = Edging(height=min(edging.height, rng.uniform(0.03, 0.12)), stone=edging.stone or 0.15,
                    stone_material=edging.stone_material, stone_tone=edging.stone_tone,

@@ -6,14 +6,14 @@ import math
 
 import numpy as np
 import shapely
-from shapely.geometry import LineString, MultiPolygon, Polygon
+from shapely.geometry import LineString, Polygon
 from shapely.geometry.base import BaseGeometry
 
 from roadhem_training.scenes.layout import bands, blocks, trees
 from roadhem_training.scenes.layout.odds import chance, pick
+from roadhem_training.scenes.layout.overlay import joined, less, shared
 from roadhem_training.scenes.layout.plan import Plan
 from roadhem_training.scenes.layout.stretches import Stretch
-from roadhem_training.scenes.layout.surface import polygons
 from roadhem_training.scenes.layout.traffic import vehicle
 from roadhem_training.scenes.world import Body, Cover, OtherLine, World
 
@@ -22,7 +22,7 @@ Rng = np.random.Generator
 GROUND = {
     "perimeter": {"pavers": 0.2, "slabs": 0.15, "soil": 0.15, "grass": 0.2, "concrete": 0.1, "gravel": 0.1},
     "detached": {"grass": 0.5, "mown": 0.3, "dry_grass": 0.1, "soil": 0.1},
-    "halls": {"concrete": 0.1, "asphalt": 0.08, "pavers": 0.1, "gravel": 0.27, "grass": 0.25, "dry_grass": 0.2},
+    "halls": {"concrete": 0.1, "pavers": 0.1, "gravel": 0.3, "grass": 0.28, "dry_grass": 0.22},
     "park": {"grass": 0.5, "mown": 0.4, "dry_grass": 0.1},
     "field": {"field": 0.6, "grass": 0.25, "soil": 0.15},
     "wood": {"grass": 0.3, "leaves": 0.4, "planting": 0.3},
@@ -39,7 +39,6 @@ CARS_OFF_ROAD = {
     "perimeter": 0.3, "detached": 0.35, "halls": 0.6, "park": 0.02, "field": 0.01, "wood": 0.01, "square": 0.2,
     "waste": 0.4,
 }  # fmt: skip
-PLOT_GRID = 1e-3
 PARCEL = (8.0, 40.0)
 
 
@@ -56,11 +55,10 @@ def fill(rng: Rng, world: World, plan: Plan, season: trees.Season, face: Polygon
     world.ground.append(Cover(face, pick(rng, GROUND[use]), float(rng.normal(0, 0.3)), 0.0, relief, heading))
     walks = bands.walks(front, face)
     stones = [bands.band(s, s.edging.stone, face) for s in front if s.edging.stone]
-    taken = shapely.union_all([c.area for c in walks] + stones)
-    plot = shapely.set_precision(face.difference(taken), PLOT_GRID).buffer(-0.05)
+    plot = less(face, joined([c.area for c in walks] + stones)).buffer(-0.05)
     built = blocks.buildings(rng, use, plot, front)
     fences, lines = blocks.enclosure(rng, use, plot)
-    garden = plot.buffer(-0.8).difference(shapely.union_all([b.footprint.buffer(0.8, quad_segs=2) for b in built]))
+    garden = less(plot.buffer(-0.8), joined([b.footprint.buffer(0.8, quad_segs=2) for b in built]))
     _ground(rng, world, use, garden, relief)
     world.ground += walks
     world.bodies += built + fences
@@ -90,18 +88,18 @@ def _ground(rng: Rng, world: World, use: str, garden: BaseGeometry, relief: floa
     x0, y0, x1, y1 = garden.bounds
     for _ in range(rng.poisson(PATCHES[use])):
         x, y = rng.uniform((x0, y0), (x1, y1))
-        area = _blob(rng, x, y, rng.uniform(1, 7)).intersection(garden)
+        area = shared(_blob(rng, x, y, rng.uniform(1, 7)), garden)
         if not area.is_empty:
             soft = rng.uniform(0.1, 1.0) if chance(rng, 0.7) else 0.0
             tone = float(rng.normal(0, 0.3))
-            world.ground.append(Cover(MultiPolygon(polygons(area)), pick(rng, PATCH), tone, soft, relief))
+            world.ground.append(Cover(area, pick(rng, PATCH), tone, soft, relief))
     if chance(rng, PATHS[use]):
         material = pick(rng, {"gravel": 0.3, "asphalt": 0.25, "pavers": 0.2, "slabs": 0.15, "sand": 0.1})
         for _ in range(int(rng.integers(1, 3))):
             line = _path(rng, shapely.convex_hull(garden))
             half = rng.uniform(0.4, 1.6)
-            area = line.buffer(half, cap_style="flat").intersection(garden)
-            world.ground.append(Cover(MultiPolygon(polygons(area)), material, float(rng.normal(0, 0.3)), 0.0, relief))
+            area = shared(line.buffer(half, cap_style="flat"), garden)
+            world.ground.append(Cover(area, material, float(rng.normal(0, 0.3)), 0.0, relief))
             sides = shapely.get_parts([line.offset_curve(d).intersection(garden) for d in (-half, half)])
             world.others += [OtherLine(g, "footway") for g in sides if isinstance(g, LineString) and g.length > 2]
 
@@ -127,10 +125,10 @@ def _parcels(rng: Rng, world: World, plot: BaseGeometry, heading: float, relief:
     while at < reach:
         end = at + rng.uniform(*PARCEL)
         corners = [[x, y] + a * u + b * v for a, b in ((-reach, at), (reach, at), (reach, end), (-reach, end))]
-        area = polygons(Polygon(corners).intersection(plot)) if chance(rng, 0.6) else []
-        if area:
+        area = shared(Polygon(corners), plot)
+        if chance(rng, 0.6) and not area.is_empty:
             crop = pick(rng, {"field": 0.5, "grass": 0.2, "dry_grass": 0.15, "soil": 0.15})
-            world.ground.append(Cover(MultiPolygon(area), crop, float(rng.normal(0, 0.35)), 0.0, relief, heading))
+            world.ground.append(Cover(area, crop, float(rng.normal(0, 0.35)), 0.0, relief, heading))
         at = end
 
 

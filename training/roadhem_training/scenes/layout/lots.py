@@ -13,9 +13,9 @@ from roadhem_training.scenes.layout import odds
 from roadhem_training.scenes.layout.alignment import Alignment
 from roadhem_training.scenes.layout.junctions import closing
 from roadhem_training.scenes.layout.odds import between, chance, pick
+from roadhem_training.scenes.layout.overlay import joined, less, polygons, shared
 from roadhem_training.scenes.layout.plan import Edging, Island, Part, Plan
 from roadhem_training.scenes.layout.shapes import oriented_box
-from roadhem_training.scenes.layout.surface import polygons
 from roadhem_training.scenes.layout.traffic import vehicle
 from roadhem_training.scenes.world import MARGIN, Paint
 
@@ -25,7 +25,7 @@ STALL_WIDTH, STALL_LENGTH = (2.3, 2.75), (4.7, 5.5)
 AISLE = (5.5, 7.2)
 MOUTH = (3.5, 8.0)
 LONGEST_ACCESS = 40.0
-MOUTH_RADIUS = {(0.0, 0.0): 0.3, (0.5, 2.0): 0.25, (2.0, 6.0): 0.45}
+MOUTH_RADIUS = {(0.0, 0.0): 0.1, (0.5, 2.0): 0.35, (2.0, 6.0): 0.55}
 LOT_MATERIAL = {"asphalt": 0.68, "concrete": 0.12, "pavers": 0.12, "setts": 0.04, "gravel": 0.04}
 FULL = (0.1, 0.95)
 LINE = (0.08, 0.12)
@@ -49,7 +49,7 @@ def lot_edging(rng: Rng) -> Edging:
 def place_lots(rng: Rng, plan: Plan, surface: BaseGeometry, window: Polygon, share: float) -> None:
     """Put a car park, yard or court with a mouth into a `share` of the blocks between the roads."""
     seen = box(-MARGIN, -MARGIN, plan.size + MARGIN, plan.size + MARGIN)
-    for face in polygons(window.difference(surface)):
+    for face in less(window, surface).geoms:
         if face.area < 350 or not chance(rng, share) or not seen.intersects(face):
             continue
         room = face.buffer(-rng.uniform(3.5, 7.0))
@@ -72,8 +72,8 @@ def _place(rng: Rng, plan: Plan, surface: BaseGeometry, face: Polygon, room: Pol
     found = [m for m in mouths if m][: 2 if chance(rng, 0.35) else 1]
     if not found:
         return
-    whole = shapely.union_all([area, *(g for m in found for g in m)])
-    for piece in polygons(whole):
+    whole = joined([area, *(g for m in found for g in m)])
+    for piece in whole.geoms:
         plan.parts.append(Part(piece, edging, material, tone, "lot"))
     if min(length, width) > 14 and chance(rng, 0.85):
         centre = area.centroid
@@ -121,13 +121,13 @@ def _mouth(
         return None
     end = start + (reach + 1.5) * across
     lane = Alignment(np.array([start, end])).strip(0, reach + 1.5, -width / 2, width / 2)
-    near = surface.intersection(Point(start + reach * across).buffer(width + 14))
-    if lane.difference(face).difference(near).area > 1e-3:
+    near = shared(surface, Point(start + reach * across).buffer(width + 14))
+    if less(less(lane, face), near).area > 1e-3:
         return None
     radius = odds.pick_between(rng, MOUTH_RADIUS)
     out = [lane]
     if radius > 0.1:
-        ground = shapely.union(near, lane)
+        ground = joined([near, lane])
         disc = Point(start + reach * across).buffer(width / 2 + 2 * radius + 1)
         out += [p for p in closing(ground, radius) if disc.contains(p)]
     return out

@@ -10,6 +10,7 @@ from shapely.geometry import MultiPolygon, Polygon
 
 from roadhem_training.scenes.layout import odds
 from roadhem_training.scenes.layout.odds import Span, between, chance, pick
+from roadhem_training.scenes.layout.overlay import less
 from roadhem_training.scenes.layout.plan import Change, Edging, Plan
 from roadhem_training.scenes.layout.stretches import OpenChain, Stretch, cut
 from roadhem_training.scenes.world import Cover
@@ -98,5 +99,5 @@ def _paving(
         near = edging.stone + edging.verge
         walk = Polygon([p - 9 * d + near * out, q + 9 * d + near * out,
                         q + 9 * d + edging.depth * out, p - 9 * d + edging.depth * out])  # fmt: skip
-        area = area.difference(walk)
+        area = less(area, walk)
     return [Cover(area, material, tone, relief=edging.height, direction=float(np.arctan2(d[1], d[0])))]

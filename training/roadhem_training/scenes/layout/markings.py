@@ -16,8 +16,8 @@ from shapely.geometry import LineString, MultiPolygon, Polygon
 from shapely.geometry.base import BaseGeometry
 
 from roadhem_training.scenes.layout.odds import between, chance, pick
+from roadhem_training.scenes.layout.overlay import joined, less, shared
 from roadhem_training.scenes.layout.plan import Crosswalk, Leg, Plan, Road
-from roadhem_training.scenes.layout.surface import polygons
 from roadhem_training.scenes.world import OtherLine, Paint
 
 Rng = np.random.Generator
@@ -174,8 +174,8 @@ def hatching(area: Polygon, heading: float, colour: str = "white", wear: float =
     v = np.array([-u[1], u[0]])
     bars = [LineString([[x, y] + t * v - reach * u, [x, y] + t * v + reach * u]).buffer(0.4, cap_style="flat")
             for t in np.arange(-reach, reach, 2.6)]  # fmt: skip
-    inside = shapely.union_all(bars).intersection(area)
-    return [Paint(shapely.union(inside, area.difference(area.buffer(-0.13))), colour, wear)]
+    line = less(area, area.buffer(-0.13))
+    return [Paint(joined([shared(joined(bars), area), line]), colour, wear)]
 
 
 def on(surface: MultiPolygon, paints: list[Paint]) -> list[Paint]:
@@ -186,7 +186,7 @@ def on(surface: MultiPolygon, paints: list[Paint]) -> list[Paint]:
         if surface.contains(p.area):
             out.append(p)
         elif surface.intersects(p.area):
-            left = polygons(surface.intersection(p.area))
-            if left:
-                out.append(Paint(MultiPolygon(left), p.colour, p.wear))
+            left = shared(surface, p.area)
+            if not left.is_empty:
+                out.append(Paint(left, p.colour, p.wear))
     return out

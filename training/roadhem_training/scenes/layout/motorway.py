@@ -16,9 +16,10 @@ from roadhem_training.scenes.layout.country import _curb, _inside, through
 from roadhem_training.scenes.layout.junctions import junctions
 from roadhem_training.scenes.layout.markings import hatching
 from roadhem_training.scenes.layout.odds import between, chance, pick
+from roadhem_training.scenes.layout.overlay import shared
 from roadhem_training.scenes.layout.plan import Edging, Junction, Part, Plan, Road
 from roadhem_training.scenes.layout.streets import flush_edging
-from roadhem_training.scenes.layout.surface import PLAN_REACH, polygons
+from roadhem_training.scenes.layout.surface import PLAN_REACH
 from roadhem_training.scenes.world import Body
 
 Rng = np.random.Generator
@@ -132,7 +133,7 @@ def _middle(rng: Rng, plan: Plan, axis: Alignment, gap: float) -> None:
     frame = box(-PLAN_REACH, -PLAN_REACH, plan.size + PLAN_REACH, plan.size + PLAN_REACH)
     for d in offsets:
         strip = axis.strip(0, axis.length, d - half, d + half)
-        plan.bodies += [Body(p, top, what, 0.0, rng.random()) for p in polygons(strip.intersection(frame))]
+        plan.bodies += [Body(p, top, what, 0.0, rng.random()) for p in shared(strip, frame).geoms]
 
 
 def _road_beside(rng: Rng, plan: Plan, axis: Alignment, border: float, window: Polygon) -> None:

@@ -11,9 +11,9 @@ from shapely.ops import split
 
 from roadhem_training.scenes.layout import odds
 from roadhem_training.scenes.layout.odds import chance, pick
+from roadhem_training.scenes.layout.overlay import polygons
 from roadhem_training.scenes.layout.plan import Plan
 from roadhem_training.scenes.layout.shapes import oriented_box
-from roadhem_training.scenes.layout.surface import polygons
 from roadhem_training.scenes.world import MARGIN, Body, Cover, OtherLine
 
 Rng = np.random.Generator

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 import shapely
 from numpy.typing import NDArray
@@ -9,9 +11,9 @@ from shapely.geometry import LineString, MultiPolygon, Point, Polygon
 from shapely.geometry.base import BaseGeometry
 
 from roadhem_training.scenes.layout.odds import between, chance, pick
+from roadhem_training.scenes.layout.overlay import joined, shared
 from roadhem_training.scenes.layout.plan import Plan, Road
 from roadhem_training.scenes.layout.stretches import OpenChain, Stretch
-from roadhem_training.scenes.layout.surface import polygons
 from roadhem_training.scenes.world import Cover, OtherLine, World
 
 Rng = np.random.Generator
@@ -19,10 +21,12 @@ Rng = np.random.Generator
 RANKS = {"track": 0, "alley": 1, "close": 2, "street": 3, "ramp": 4, "main": 5, "country": 5, "motorway": 6}
 PATCH_PER_100_M, TRENCH_PER_100_M, OVERLAY_PER_100_M, STAIN_PER_100_M, MANHOLE_PER_100_M = 1.2, 0.5, 0.5, 1.5, 2.0
 PATCH_TONE = 0.45
+CRACKED, CRACK_PER_100_M = 0.3, 8.0
+WHEEL_TRACKS, TRAM, GAUGE = 0.3, 0.08, 1.435
 SLAB = (3.0, 6.0)
 BLOWN = {"raised": 0.10, "lowered": 0.1, "flush": 0.4}  # share of stretches with soil or dust over the edge
 GROWN = {"raised": 0.05, "lowered": 0.0, "flush": 0.35}  # share of stretches over which grass hangs
-BLOWN_MATERIAL = {"soil": 0.35, "sand": 0.3, "gravel": 0.2, "leaves": 0.15}
+BLOWN_MATERIAL = {"soil": 0.35, "sand": 0.3, "gravel": 0.2, "leaves": 0.15, "snow": 0.04, "wet": 0.08}
 
 
 def pave(rng: Rng, world: World, plan: Plan, surface: MultiPolygon) -> None:
@@ -37,15 +41,16 @@ def pave(rng: Rng, world: World, plan: Plan, surface: MultiPolygon) -> None:
     for node in plan.junctions:
         roads = [plan.roads[leg.road] for leg in node.legs]
         owner = min(roads, key=_rank) if chance(rng, 0.6) else max(roads, key=_rank)
-        _lay(world, surface, shapely.union_all(node.corners), owner.material, owner.tone, owner.direction)
+        _lay(world, surface, joined(node.corners), owner.material, owner.tone, owner.direction)
     for road in sorted(plan.roads, key=_rank):
         _lay(world, surface, road.area, road.material, road.tone, road.direction)
     for node in plan.junctions:
         if node.round:
             main = max((plan.roads[leg.road] for leg in node.legs), key=_rank)
             _lay(world, surface, node.corners[0], main.material, main.tone, 0.0)
-    for k, road in enumerate(plan.roads):
-        _wear(rng, world, plan, k, road, surface)
+    shapely.prepare(surface)
+    for road in plan.roads:
+        _wear(rng, world, road, surface)
 
 
 def _rank(road: Road) -> int:
@@ -55,46 +60,97 @@ def _rank(road: Road) -> int:
 def _lay(
     world: World, surface: MultiPolygon, area: BaseGeometry, material: str, tone: float, direction: float
 ) -> None:
-    pieces = polygons(shapely.intersection(area, surface))
-    if pieces:
-        world.ground.append(Cover(MultiPolygon(pieces), material, tone, direction=direction))
+    laid = shared(area, surface)
+    if not laid.is_empty:
+        world.ground.append(Cover(laid, material, tone, direction=direction))
 
 
-def _wear(rng: Rng, world: World, plan: Plan, k: int, road: Road, surface: MultiPolygon) -> None:
-    length, axis = road.axis.length, road.axis
-    out: list[tuple[BaseGeometry, str, float, float]] = []
-
-    def count(per_100_m: float) -> int:
-        return int(rng.poisson(per_100_m * length / 100))
-
+def _wear(rng: Rng, world: World, road: Road, surface: MultiPolygon) -> None:
+    """Repairs, stains, tracks and covers of one road."""
+    found = _spots(rng, road) + _tracks(rng, road)
     if road.material == "asphalt":
-        for _ in range(count(PATCH_PER_100_M)):
-            s, d = rng.uniform(0, length - 0.5), rng.uniform(-road.half, road.half)
-            s1, wide = min(length, s + rng.uniform(0.6, 7)), rng.uniform(0.5, 2.2)
-            area = axis.strip(s, s1, d - wide / 2, d + wide / 2)
-            out.append((area, "asphalt", float(rng.normal(0, PATCH_TONE)), 0.0))
-        for _ in range(count(TRENCH_PER_100_M)):
-            out.append((_trench(rng, road), "asphalt", float(rng.normal(0, PATCH_TONE)), 0.0))
-        for _ in range(count(OVERLAY_PER_100_M)):
-            s = rng.uniform(0, length)
-            right, left = pick(rng, {(-1.0, 1.0): 0.5, (-1.0, 0.0): 0.25, (0.0, 1.0): 0.25})
-            area = axis.strip(s, min(length, s + rng.uniform(8, 60)) + 0.01, right * road.half, left * road.half)
-            out.append((area, "asphalt", float(rng.normal(0, PATCH_TONE)), 0.0))
-    for _ in range(count(STAIN_PER_100_M)):
-        x, y = axis.at(rng.uniform(0, length), rng.uniform(-road.half, road.half))
-        stain = Point(x, y).buffer(rng.uniform(0.2, 1.2), quad_segs=4)
-        material = pick(rng, {"asphalt": 0.7, "wet": 0.2, "soil": 0.1})
-        out.append((stain, material, float(rng.normal(-0.3, 0.3)), rng.uniform(0.2, 0.8)))
-    for _ in range(count(MANHOLE_PER_100_M)):
-        x, y = axis.at(rng.uniform(0, length), rng.normal(0, 0.4) * road.half)
-        out.append((Point(x, y).buffer(rng.uniform(0.25, 0.4), quad_segs=6), "metal", float(rng.normal(0, 0.3)), 0.0))
-    shapely.prepare(surface)
-    for area, material, tone, soft in out:
-        if surface.intersects(area):
-            inside = area if surface.contains(area) else MultiPolygon(polygons(surface.intersection(area)))
-            world.ground.append(Cover(inside, material, tone, soft))
+        found += _repairs(rng, road) + _sealed_cracks(rng, road)
+    if road.rank == "main" and chance(rng, TRAM):
+        found += _tram(rng, world, road)
+    for cover in found:
+        if surface.contains(cover.area):
+            world.ground.append(cover)
+        elif surface.intersects(cover.area):
+            world.ground.append(replace(cover, area=shared(surface, cover.area)))
     if road.material == "concrete":
         world.others += _slab_joints(rng, road)
+
+
+def _count(rng: Rng, road: Road, per_100_m: float) -> range:
+    return range(int(rng.poisson(per_100_m * road.axis.length / 100)))
+
+
+def _repairs(rng: Rng, road: Road) -> list[Cover]:
+    """Patches, filled cuts and overlays with straight seams."""
+    length, axis, areas = road.axis.length, road.axis, []
+    for _ in _count(rng, road, PATCH_PER_100_M):
+        s, d = rng.uniform(0, length - 0.5), rng.uniform(-road.half, road.half)
+        s1, wide = min(length, s + rng.uniform(0.6, 7)), rng.uniform(0.5, 2.2)
+        areas.append(axis.strip(s, s1, d - wide / 2, d + wide / 2))
+    areas += [_trench(rng, road) for _ in _count(rng, road, TRENCH_PER_100_M)]
+    for _ in _count(rng, road, OVERLAY_PER_100_M):
+        s = rng.uniform(0, length)
+        right, left = pick(rng, {(-1.0, 1.0): 0.5, (-1.0, 0.0): 0.25, (0.0, 1.0): 0.25})
+        s1 = min(length, s + rng.uniform(8, 60)) + 0.01
+        areas.append(axis.strip(s, s1, right * road.half, left * road.half))
+    return [Cover(area, "asphalt", float(rng.normal(0, PATCH_TONE))) for area in areas]
+
+
+def _spots(rng: Rng, road: Road) -> list[Cover]:
+    """Stains and manholes."""
+    out = []
+    for _ in _count(rng, road, STAIN_PER_100_M):
+        x, y = road.axis.at(rng.uniform(0, road.axis.length), rng.uniform(-road.half, road.half))
+        area = Point(x, y).buffer(rng.uniform(0.2, 1.2), quad_segs=4)
+        material = pick(rng, {road.material: 0.7, "wet": 0.2, "soil": 0.1})
+        out.append(Cover(area, material, float(rng.normal(-0.3, 0.3)), rng.uniform(0.2, 0.8)))
+    for _ in _count(rng, road, MANHOLE_PER_100_M):
+        x, y = road.axis.at(rng.uniform(0, road.axis.length), rng.normal(0, 0.4) * road.half)
+        area = Point(x, y).buffer(rng.uniform(0.25, 0.4), quad_segs=6)
+        out.append(Cover(area, "metal", float(rng.normal(0, 0.3))))
+    return out
+
+
+def _tracks(rng: Rng, road: Road) -> list[Cover]:
+    """Polished or oily tracks of wheels in each lane."""
+    if not chance(rng, WHEEL_TRACKS):
+        return []
+    lane, tone = road.width / road.lanes, float(rng.normal(-0.1, 0.15))
+    middles = [(k + 0.5) * lane - road.half + d for k in range(road.lanes) for d in (-0.8, 0.8)]
+    areas = [road.axis.strip(0, road.axis.length, d - 0.3, d + 0.3) for d in middles]
+    return [Cover(joined(areas), road.material, road.tone + tone, 0.5, direction=road.direction)]
+
+
+def _sealed_cracks(rng: Rng, road: Road) -> list[Cover]:
+    """Cracks filled with bitumen: thin dark lines, many along the road, some across."""
+    areas = []
+    for _ in _count(rng, road, CRACK_PER_100_M * (1.0 if chance(rng, CRACKED) else 0.0)):
+        s, d = rng.uniform(0, road.axis.length), rng.uniform(-1, 1) * road.half
+        n = int(rng.integers(6, 30))
+        along = chance(rng, 0.7)
+        step = np.cumsum(rng.uniform(0.4, 1.0, n) if along else rng.normal(0, 0.15, n))
+        side = np.cumsum(rng.normal(0, 0.12, n) if along else rng.uniform(0.2, 0.5, n))
+        stations = np.clip(s + step, 0, road.axis.length)
+        line = LineString(road.axis.at(stations, np.clip(d + side, -road.half, road.half)))
+        areas.append(line.buffer(rng.uniform(0.02, 0.05), cap_style="flat", quad_segs=1))
+    return [Cover(joined(areas), "asphalt", -0.7)] if areas else []
+
+
+def _tram(rng: Rng, world: World, road: Road) -> list[Cover]:
+    """Two tram tracks in the middle of a street, in setts or in the road's own surface."""
+    out = []
+    if chance(rng, 0.4):
+        bed = road.axis.strip(0, road.axis.length, -2.9, 2.9)
+        out.append(Cover(bed, pick(rng, {"setts": 0.6, "concrete": 0.4}), direction=road.direction))
+    offsets = [track + rail for track in (-1.5, 1.5) for rail in (-0.5 * GAUGE, 0.5 * GAUGE)]
+    rails = [road.axis.strip(0, road.axis.length, d - 0.05, d + 0.05) for d in offsets]
+    world.others += [OtherLine(LineString(road.axis.parallel(0, road.axis.length, d)), "rail") for d in offsets]
+    return [*out, Cover(joined(rails), "metal", 0.2)]
 
 
 def _trench(rng: Rng, road: Road) -> Polygon:

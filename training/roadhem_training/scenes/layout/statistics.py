@@ -14,8 +14,8 @@ from numpy.typing import NDArray
 from shapely.geometry import LineString, MultiPolygon, Polygon, box
 from shapely.geometry.base import BaseGeometry
 
+from roadhem_training.scenes.layout.overlay import polygons
 from roadhem_training.scenes.layout.stretches import Chain
-from roadhem_training.scenes.layout.surface import polygons
 
 STEP = 0.5  # metres between samples of an outline
 TURNING = 1 / 25.0  # curvature beyond which a sample belongs to a corner, 1/m

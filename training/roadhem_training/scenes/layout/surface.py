@@ -6,6 +6,7 @@ import shapely
 from shapely.geometry import MultiPolygon, Polygon, box
 from shapely.geometry.base import BaseGeometry
 
+from roadhem_training.scenes.layout.overlay import joined, polygons, shared
 from roadhem_training.scenes.layout.plan import Plan
 from roadhem_training.scenes.world import MARGIN
 
@@ -23,10 +24,11 @@ def unite(plan: Plan, reach: float) -> MultiPolygon:
     if not pieces:
         return MultiPolygon()
     window = box(-reach, -reach, plan.size + reach, plan.size + reach)
-    whole = shapely.intersection(shapely.union_all(pieces, grid_size=GRID), window)
+    whole = shared(shapely.union_all(pieces, grid_size=GRID), window)
     whole = _filled(whole.buffer(CRACK, join_style="mitre").buffer(-CRACK, join_style="mitre"))
     if plan.islands:
-        whole = shapely.difference(whole, shapely.union_all([i.area for i in plan.islands]), grid_size=GRID)
+        islands = shapely.union_all([i.area for i in plan.islands], grid_size=GRID)
+        whole = shapely.difference(whole, islands, grid_size=GRID)
     return MultiPolygon([shapely.geometry.polygon.orient(p) for p in polygons(whole) if p.area > 1.0])
 
 
@@ -34,7 +36,7 @@ def rough_surface(plan: Plan) -> BaseGeometry:
     """What one can drive on so far, islands not taken out: to see where there is room."""
     pieces = [road.area for road in plan.roads]
     pieces += [corner for junction in plan.junctions for corner in junction.corners]
-    return shapely.union_all(pieces + [part.area for part in plan.parts])
+    return joined(pieces + [part.area for part in plan.parts])
 
 
 def _filled(geometry: BaseGeometry) -> BaseGeometry:
@@ -44,8 +46,3 @@ def _filled(geometry: BaseGeometry) -> BaseGeometry:
             for p in polygons(geometry)
         ]
     )
-
-
-def polygons(geometry: BaseGeometry) -> list[Polygon]:
-    """The polygons in `geometry`, whatever else it holds."""
-    return [p for p in shapely.get_parts(shapely.get_parts(geometry)) if isinstance(p, Polygon) and not p.is_empty]

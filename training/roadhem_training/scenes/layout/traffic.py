@@ -18,7 +18,7 @@ from roadhem_training.scenes.world import Body
 CAR_LENGTH, CAR_WIDTH, CAR_HEIGHT = (3.6, 4.9), (1.65, 1.95), (1.35, 1.9)
 TRUCK_LENGTH, TRUCK_WIDTH, TRUCK_HEIGHT = (7.0, 16.5), (2.3, 2.55), (2.8, 4.0)
 FROM_CURB = (0.1, 0.4)  # metres from the wheels to the foot of the curb
-USUAL_LENGTH, USUAL_WIDTH = 4.5, 1.8
+USUAL_LENGTH, USUAL_WIDTH, STALL = 4.5, 1.8, 2.5
 BUMPER_GAP = (0.6, 2.0)
 CLEAR_OF_JUNCTION = 5.0
 GROUND_CLEARANCE = 0.15
@@ -47,22 +47,25 @@ def parked(rng: np.random.Generator, plan: Plan, stretches: list[Stretch]) -> li
         road = plan.roads[stretch.road] if stretch.road >= 0 else None
         street = road is not None and road.rank in ("main", "street", "close")
         flush = street and stretch.edging.kind == "flush" and stretch.edging.verge > USUAL_WIDTH
-        bay = stretch.owner == "bay" or (flush and stretch.edging.verge_material in BAY_PAVING)
+        bay = stretch.owner.endswith("bay") or (flush and stretch.edging.verge_material in BAY_PAVING)
         allowed = road is not None and road.parking[0 if stretch.side < 0 else 1]
         if not (bay or allowed) or stretch.edging.kind == "lowered" or stretch.line.length < 6:
             continue
         chain, full = OpenChain(stretch.line), rng.uniform(0.3, 0.95)
         side = -1.0 if flush and bay else 1.0
+        cross = bay and (stretch.owner == "cross_bay" or (flush and stretch.edging.verge > USUAL_LENGTH))
+        long, wide = (STALL, USUAL_LENGTH) if cross else (USUAL_LENGTH, USUAL_WIDTH)
         at = rng.uniform(0.5, 3.0)
-        while at + CAR_LENGTH[1] < chain.length:
-            (x, y), d = chain.frame(at + 0.5 * USUAL_LENGTH)
-            inward = side * (between(rng, FROM_CURB) + 0.5 * USUAL_WIDTH)
+        while at + long < chain.length:
+            (x, y), d = chain.frame(at + 0.5 * long)
+            inward = side * (between(rng, FROM_CURB) + 0.5 * wide)
             x, y = x - d[1] * inward, y + d[0] * inward
             half = road.half if road else 0.0
             far = nodes.is_empty or nodes.distance(shapely.Point(x, y)) > half + CLEAR_OF_JUNCTION + 3
             if (far or bay) and chance(rng, full):
-                out.append(vehicle(rng, x, y, math.atan2(d[1], d[0]) + rng.normal(0, 0.015)))
-            at += USUAL_LENGTH + between(rng, BUMPER_GAP)
+                turn = math.pi / 2 if cross else 0.0
+                out.append(vehicle(rng, x, y, math.atan2(d[1], d[0]) + turn + rng.normal(0, 0.015)))
+            at += long + (0.0 if cross else between(rng, BUMPER_GAP))
     return out
 
 
