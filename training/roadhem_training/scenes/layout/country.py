@@ -93,10 +93,9 @@ def _road(rng: Rng, axis: Alignment, rank: str) -> Road:
 
 
 def _curb(rng: Rng) -> Edging:
-    return Edging(height=round(between(rng, odds.CURB_HEIGHT), 3),
-                  stone=between(rng, odds.CURB_STONE) if chance(rng, 0.8) else 0.0,
+    gutter, stone = odds.gutter_and_stone(rng, 0.5, 0.8)
+    return Edging(height=round(between(rng, odds.CURB_HEIGHT), 3), gutter=gutter, stone=stone,
                   stone_material=pick(rng, odds.STONE_ODDS), stone_tone=odds.pick_between(rng, odds.STONE_TONE_ODDS),
-                  gutter=between(rng, odds.GUTTER) if chance(rng, 0.5) else 0.0,
                   gutter_material=pick(rng, odds.GUTTER_ODDS),
                   footway=rng.uniform(1.0, 2.5) if chance(rng, 0.6) else 0.0,
                   footway_material=pick(rng, odds.FOOTWAY_ODDS))  # fmt: skip

@@ -37,10 +37,9 @@ def lot_edging(rng: Rng) -> Edging:
     if chance(rng, 0.25):
         ground = pick(rng, {"grass": 0.5, "soil": 0.2, "gravel": 0.3})
         return Edging("flush", 0.0, verge=rng.uniform(0.3, 1.2), verge_material=ground)
-    return Edging(height=round(between(rng, odds.CURB_HEIGHT), 3),
-                  stone=between(rng, odds.CURB_STONE) if chance(rng, 0.8) else 0.0,
+    gutter, stone = odds.gutter_and_stone(rng, 0.3, 0.8)
+    return Edging(height=round(between(rng, odds.CURB_HEIGHT), 3), gutter=gutter, stone=stone,
                   stone_material=pick(rng, odds.STONE_ODDS), stone_tone=odds.pick_between(rng, odds.STONE_TONE_ODDS),
-                  gutter=between(rng, odds.GUTTER) if chance(rng, 0.3) else 0.0,
                   gutter_material=pick(rng, odds.GUTTER_ODDS),
                   footway=rng.uniform(1.2, 2.2) if chance(rng, 0.25) else 0.0,
                   footway_material=pick(rng, odds.FOOTWAY_ODDS))  # fmt: skip

@@ -29,6 +29,7 @@ CURB_HEIGHT: Span = (0.06, 0.20)
 LOWERED_HEIGHT: Span = (0.0, 0.04)
 GUTTER: Span = (0.3, 0.6)
 CURB_STONE: Span = (0.08, 0.30)
+STONE_BEHIND_GUTTER = 0.94  # share of gutters that end at a curb stone one can see: a bare strip is rarely a gutter
 DRIVEWAY: Span = (3.0, 7.0)
 RAMP: Span = (1.2, 5.0)
 ISLAND_FILL = {
@@ -150,3 +151,9 @@ def pick(rng: np.random.Generator, odds: Mapping[T, float]) -> T:
 def pick_between(rng: np.random.Generator, odds: Mapping[Span, float]) -> float:
     """A number drawn evenly from a span that was itself drawn by weight."""
     return between(rng, pick(rng, odds))
+
+
+def gutter_and_stone(rng: np.random.Generator, gutter: float, stone: float) -> tuple[float, float]:
+    """Widths of a gutter and a curb stone, 0 where there is none, by their shares."""
+    pan = between(rng, GUTTER) if chance(rng, gutter) else 0.0
+    return pan, between(rng, CURB_STONE) if chance(rng, STONE_BEHIND_GUTTER if pan else stone) else 0.0

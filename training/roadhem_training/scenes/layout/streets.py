@@ -154,9 +154,8 @@ class Family:
 
     def __init__(self, rng: Rng, rules: StreetOdds):
         self.surface = pick(rng, rules.surface)
-        self.gutter = between(rng, odds.GUTTER) if chance(rng, rules.gutter) else 0.0
+        self.gutter, self.stone = odds.gutter_and_stone(rng, rules.gutter, rules.stone)
         self.gutter_material = pick(rng, odds.GUTTER_ODDS)
-        self.stone = between(rng, odds.CURB_STONE) if chance(rng, rules.stone) else 0.0
         self.stone_material = pick(rng, odds.STONE_ODDS)
         self.stone_tone = pick_between(rng, odds.STONE_TONE_ODDS)
         self.footway_material = pick(rng, odds.FOOTWAY_ODDS)
