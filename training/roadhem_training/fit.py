@@ -106,7 +106,7 @@ def step_once(run: Run, crops: Crops, steps: int) -> dict[str, Tensor]:
 
 def wait_for_scenes(crops: Crops) -> None:
     """Return once the pool holds enough scenes."""
-    while crops.refresh(at_most=FEWEST_SCENES) < FEWEST_SCENES:
+    while crops.refresh(at_most=crops.keep) < FEWEST_SCENES:
         time.sleep(5)
 
 
