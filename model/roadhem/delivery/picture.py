@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from itertools import groupby
 from pathlib import Path
 from typing import Any
 
@@ -37,6 +38,7 @@ GREYED = 0.45
 """Share of grey in the backdrop."""
 NO_TILE = 0.87
 """Grey where no tile lies."""
+LINE_POINTS = 2.3
 SMALL_DOUBT = 0.3
 """Doubts of a smaller weight are not drawn."""
 
@@ -111,20 +113,25 @@ def _show_backdrop(axes: Axes, image: NDArray[np.float32], bounds: Bounds) -> No
 
 
 def _draw_lines(shown: _Map) -> None:
-    stretches = shown.layers.stretches
-    paths = _paths(stretches, shown.grid)
-    if not paths:
-        return
-    casing = LineCollection(paths, colors=CASING, linewidths=5.0 * shown.unit, alpha=0.55, capstyle="round", zorder=3)
+    runs = _runs(shown.layers.stretches, shown.grid)
+    width = LINE_POINTS * shown.unit
+    paths = [path for path, _, _ in runs]
+    casing = LineCollection(paths, colors=CASING, linewidths=1.8 * width, alpha=0.55, capstyle="round", zorder=3)
     shown.axes.add_collection(casing)
-    steps = np.array([step_of(row["spread_m"]) for row in stretches.rows])
-    hidden = np.array([row["seen"] == "bridged" for row in stretches.rows])
-    for step, colour in enumerate(SPREAD_COLOURS):
-        for dashed in (False, True):
-            wanted = [path for path, yes in zip(paths, (steps == step) & (hidden == dashed), strict=True) if yes]
-            style: Any = DASHES if dashed else "solid"
-            lines = LineCollection(wanted, colors=colour, linewidths=2.8 * shown.unit, linestyles=style, zorder=4)
-            shown.axes.add_collection(lines)
+    for path, step, hidden in runs:
+        style = {"ls": DASHES, "dash_capstyle": "butt"} if hidden else {"solid_capstyle": "round"}
+        shown.axes.add_line(Line2D(*path.T, color=SPREAD_COLOURS[step], lw=width, zorder=4, **style))
+
+
+def _runs(stretches: Table, grid: WorkingGrid) -> list[tuple[NDArray[np.float64], int, bool]]:
+    """Join neighbouring stretches that look alike: points in grid metres, step of spread, whether hidden."""
+    looks = [(row["edge_id"], step_of(row["spread_m"]), row["seen"] == "bridged") for row in stretches.rows]
+    rows = zip(looks, stretches.geometry, strict=True)
+    runs = []
+    for (_, step, hidden), alike in groupby(rows, key=lambda row: row[0]):
+        parts = [shapely.get_coordinates(shape) for _, shape in alike]
+        runs.append((grid.to_metres(np.concatenate(parts)), step, hidden))
+    return runs
 
 
 def _draw_marks(shown: _Map) -> None:
@@ -161,10 +168,6 @@ def round_length(wanted: float) -> float:
     """Return the largest of 1, 2, 5 times a power of ten that is not above `wanted`."""
     power = 10.0 ** math.floor(math.log10(wanted))
     return max(step * power for step in (1, 2, 5) if step * power <= wanted)
-
-
-def _paths(table: Table, grid: WorkingGrid) -> list[NDArray[np.float64]]:
-    return [grid.to_metres(shapely.get_coordinates(shape)) for shape in table.geometry]
 
 
 def _places(shapes: list[Any], grid: WorkingGrid) -> NDArray[np.float64]:

@@ -23,7 +23,7 @@ from roadhem.lines.tables import Table
 from roadhem.tracing.result import Trace
 
 LEAST_NEARNESS = 0.6
-MOST_SIGMA_M = 0.12
+MOST_SIGMA_M = 0.15
 ON_EDGE_M = 0.12
 """Farthest that the edge may be from the middle of a candidate cell."""
 SIDE_M = 0.8
