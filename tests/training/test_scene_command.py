@@ -12,7 +12,8 @@ import shapely
 from click.testing import CliRunner, Result
 
 from roadhem.errors import BadInput
-from roadhem_training.commands import scene
+from roadhem_training.commands import scene, style_with_roads
+from roadhem_training.scenes.layout import STYLE_ODDS
 from roadhem_training.scenes.write import FILES
 
 
@@ -145,3 +146,9 @@ def test_output_must_be_a_folder(tmp_path):
     result = run("--seed", "1", "--out", str(target))
     assert isinstance(result.exception, BadInput)
     assert target.read_text() == "kept"
+
+
+def test_every_drawn_place_has_roads():
+    """Should draw each style with roads at some seed, and never land without any."""
+    drawn = {style_with_roads(seed) for seed in range(200)}
+    assert drawn == set(STYLE_ODDS) - {"no_road"}

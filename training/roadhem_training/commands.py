@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import random
 from pathlib import Path
 
 import click
 
 from roadhem.errors import BadInput
 
+ROADLESS = "no_road"
 DEFAULT_ORIGIN = "500000,5600000"
 
 
@@ -37,8 +39,17 @@ def scene(seed: int, size: int, pixel: float, origin: str, style: str | None, fo
 
     corner = read_origin(origin)
     check_folder(folder)
-    write_scene(make_scene(seed, size, pixel, style), seed, folder, corner)
+    made = make_scene(seed, size, pixel, style or style_with_roads(seed))
+    write_scene(made, seed, folder, corner)
     click.echo(f"scene {seed}: {', '.join(FILES)} in {folder}")
+
+
+def style_with_roads(seed: int) -> str:
+    """Draw a kind of place that has edges to trace; land without roads is for training only."""
+    from roadhem_training.scenes.layout import STYLE_ODDS
+
+    odds = {style: share for style, share in STYLE_ODDS.items() if style != ROADLESS}
+    return random.Random(seed).choices(list(odds), list(odds.values()))[0]
 
 
 def read_origin(text: str) -> tuple[float, float]:

@@ -7,6 +7,7 @@ from itertools import pairwise
 
 import numpy as np
 import shapely
+import shapely.ops
 from numpy.typing import NDArray
 from shapely.geometry import LineString, Point
 
@@ -18,6 +19,9 @@ STEP_M = 0.1
 
 SEEN, SHADOW, HIDDEN = 0, 1, 2
 SEEN_NAMES = ("seen", "shadow", "hidden")
+
+SAME_M = 1e-6
+"""Coordinates are rounded to this before lines are joined."""
 
 SHORTEST_M = 0.5
 """Shorter runs take the state of what lies before them."""
@@ -110,7 +114,8 @@ def _split(line: LineString, edge: TrueEdge, scene: Scene) -> list[tuple[LineStr
     runs = _runs(states, SHORTEST_M * count / line.length)
     out = []
     for first, last, state in runs:
-        part = shapely.ops.substring(line, first * line.length / count, last * line.length / count)
+        end = line.length if last == count else last * line.length / count
+        part = shapely.ops.substring(line, first * line.length / count, end)
         out.append((part, _visible(runs, first, state, part.length), SEEN_NAMES[state]))
     return out
 
@@ -145,8 +150,11 @@ def _runs(states: NDArray[np.int64], shortest: float) -> list[tuple[int, int, in
 
 
 def _joined(lines: list[LineString]) -> list[LineString]:
-    merged = shapely.line_merge(shapely.MultiLineString(lines), directed=True) if lines else None
-    return _lines(merged) if merged is not None else []
+    """Join lines that meet end to start, to within SAME_M."""
+    if not lines:
+        return []
+    rounded = shapely.set_precision(shapely.MultiLineString(lines), SAME_M, mode="pointwise")
+    return _lines(shapely.line_merge(rounded, directed=True))
 
 
 def _lines(shape: shapely.Geometry) -> list[LineString]:
