@@ -15,7 +15,7 @@ from shapely import LineString, box
 from roadhem.accuracy.intervals import Segments, intersect, subtract, union, within
 from roadhem.accuracy.matching import SEARCH_M, LineMeasures, measure_lines
 from roadhem.errors import BadInput
-from roadhem.jobs.measure import MeasureJob, measure_truth
+from roadhem.jobs.measure import MeasureJob, measure_truth, unused_areas
 
 
 def measured(reference: list[LineString], lines: list[LineString], **options: object) -> LineMeasures:
@@ -163,6 +163,8 @@ def test_areas_layer_is_found_by_its_role(tmp_path: Path) -> None:
     """Should take the layer `areas` of a file that has edges too."""
     file = write(tmp_path / "t.gpkg", "edges", [LineString([(500_000, 0), (500_100, 0)])])
     write(file, "areas", [box(500_000, -5, 500_050, 5)])
+    assert unused_areas(MeasureJob(str(file), str(file)))
+    assert not unused_areas(MeasureJob(str(file), str(file), areas=str(file)))
     found = measure_truth(MeasureJob(str(file), str(file), areas=str(file)))
     assert found.reference_m == pytest.approx(50, rel=0.001)
 

@@ -43,4 +43,5 @@ def mark(out: Path, as_json: bool, **tiles_and_model: Any) -> None:
         print_json(asdict(summary))
     else:
         print_figures([("seeds", f"{summary.seeds}"), ("km they give", f"{summary.km:.3f}")])
-    sys.exit(tell_faults(summary.faults, summary.warnings))
+    nothing = [] if summary.seeds else ["no edge is sure enough to propose a seed; set seeds by hand"]
+    sys.exit(tell_faults(summary.faults, summary.warnings + nothing))

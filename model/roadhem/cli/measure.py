@@ -6,7 +6,7 @@ from dataclasses import asdict
 
 import click
 
-from roadhem.cli.options import ballpark_option, json_option, print_figures, print_json
+from roadhem.cli.options import ballpark_option, json_option, print_figures, print_json, tell_faults
 
 
 @click.command
@@ -26,9 +26,12 @@ def measure(lines: str, truth: str, areas: str | None, buffer_m: float, allow_ba
     Example:
       roadhem measure lines.gpkg --truth checked.gpkg --areas checked.gpkg --buffer 0.30
     """
-    from roadhem.jobs.measure import MeasureJob, measure_truth
+    from roadhem.jobs.measure import MeasureJob, measure_truth, unused_areas
 
-    measures = measure_truth(MeasureJob(lines, truth, areas, buffer_m, allow_ballpark))
+    job = MeasureJob(lines, truth, areas, buffer_m, allow_ballpark)
+    measures = measure_truth(job)
+    if unused_areas(job):
+        tell_faults([], [f"{truth} holds checked areas too; --areas {truth} counts only what lies in them"])
     if as_json:
         print_json({name: _plain(value) for name, value in asdict(measures).items()})
         return

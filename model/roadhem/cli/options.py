@@ -82,12 +82,12 @@ def print_figures(rows: list[tuple[str, str]]) -> None:
         click.echo(f"{name:<{width}}  {figure:>12}")
 
 
-def tell_faults(faults: list[str], warnings: list[str]) -> int:
-    """List on stderr what was left out or may mislead; return the exit status."""
-    for warning in warnings:
-        click.echo(f"note: {warning}", err=True)
+def tell_faults(faults: list[str], notes: list[str]) -> int:
+    """List on stderr what to mind and what was left out; return the exit status."""
+    for note in notes:
+        click.echo(f"note: {note.rstrip('.')}.", err=True)
     for fault in faults:
-        click.echo(f"left out: {fault}", err=True)
+        click.echo(f"left out: {fault.rstrip('.')}.", err=True)
     return 1 if faults else 0
 
 

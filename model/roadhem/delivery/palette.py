@@ -7,7 +7,7 @@ from itertools import pairwise
 SPREAD_LIMITS_M = (0.03, 0.06, 0.12, 0.25)
 """Upper limits of the steps but the last."""
 
-SPREAD_COLOURS = ("#3fd0ff", "#fff48a", "#f58a07", "#cf1b2b", "#7316ad")
+SPREAD_COLOURS = ("#3fd0ff", "#fff48a", "#f58a07", "#cf1b2b", "#a45aff")
 """From sure to unsure."""
 
 CASING = "#101418"

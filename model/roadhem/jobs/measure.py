@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from roadhem.accuracy.matching import BUFFER_M, LineMeasures, measure_lines
 from roadhem.errors import BadInput
 from roadhem.lines.ground import Ground
-from roadhem.lines.vectors import Layer, read_layer, to_crs
+from roadhem.lines.vectors import Layer, layers_of, read_layer, to_crs
 
 UNSCORED = ("hidden", "unsure")
 """Values of the truth's column `visible` that are neither missed nor wrong."""
@@ -35,6 +35,11 @@ class MeasureJob:
     areas: str | None = None
     buffer_m: float = BUFFER_M
     allow_ballpark: bool = False
+
+
+def unused_areas(job: MeasureJob) -> bool:
+    """Say whether the truth's file holds checked areas that the job does not use."""
+    return job.areas is None and "areas" in layers_of(job.truth)
 
 
 def measure_truth(job: MeasureJob) -> LineMeasures:

@@ -52,4 +52,3 @@ class Ground:
         across = self.step_m([(x - half, y), (x + half, y)])[0]
         up = self.step_m([(x, y - half), (x, y + half)])[0]
         return float((across + up) / (4 * half))
-

@@ -68,6 +68,11 @@ def read_layer(source: str, role: str) -> Layer:
     return Layer(layer, source, geometry, dict(zip(meta["fields"], data, strict=True)), np.asarray(fids), crs)
 
 
+def layers_of(source: str) -> list[str]:
+    """Return the names of the layers of FILE, FILE:LAYER or a PostGIS connection; raises BadInput."""
+    return _layers(split_source(source)[0], source)
+
+
 def split_source(source: str) -> tuple[str, str | None]:
     """Split FILE:LAYER; an existing FILE whose own name holds a colon is taken whole, a drive letter stays."""
     if source.startswith(POSTGIS) or Path(source).exists():
