@@ -345,9 +345,9 @@ def test_layers_are_chosen_by_name_then_role_then_alone(tmp_path: Path) -> None:
     write_seeds(path, [(2, 2)], layer="edges of old")
     assert read_layer(str(path), "seeds").name == "seeds"
     assert read_layer(f"{path}:edges of old", "seeds").name == "edges of old"
-    with pytest.raises(BadInput, match=r"none is called 'areas': name one as FILE:LAYER from seeds, edges of old"):
+    with pytest.raises(BadInput, match=r"none is called 'areas'; name one as FILE:LAYER from seeds, edges of old"):
         read_layer(str(path), "areas")
-    with pytest.raises(BadInput, match=r"no layer 'x': it has seeds, edges of old"):
+    with pytest.raises(BadInput, match=r"no layer 'x'; it has seeds, edges of old"):
         read_layer(f"{path}:x", "seeds")
     alone = write_seeds(tmp_path / "one.gpkg", [(1, 1)], layer="whatever")
     assert read_layer(str(alone), "seeds").name == "whatever"
@@ -404,7 +404,7 @@ def test_unwritable_targets_are_refused_first(tmp_path: Path) -> None:
     """Should refuse a folder that is not there, a folder as file and a suffix that says nothing."""
     with pytest.raises(BadInput, match="does not exist"):
         check_target(tmp_path / "no" / "o.gpkg")
-    with pytest.raises(BadInput, match="it is a folder"):
+    with pytest.raises(BadInput, match="is a folder"):
         check_target(tmp_path)
     with pytest.raises(BadInput, match=r"ends in \.gpkg"):
         check_target(tmp_path / "o.txt", (".gpkg",))
