@@ -5,32 +5,14 @@ from __future__ import annotations
 import math
 
 import numpy as np
-from numpy.typing import NDArray
 
-from roadhem.tracing.corner import turn_of
-from roadhem.tracing.follow import (
-    BESIDE,
-    BRIDGE,
-    COAST,
-    COLUMNS,
-    CORNER,
-    FORM,
-    KIND,
-    LEFT,
-    NEAR,
-    RIGHT,
-    SIGHT,
-    SIGMA,
-    TRAVEL,
-    TX,
-    TY,
-    X,
-    Y,
-)
+from roadhem.tracing.follow import COAST, CORNER, FORM, LEFT, NEAR, RIGHT, TRAVEL, TX, TY, X, Y
+from roadhem.tracing.legs import hermite, turn_of
 from roadhem.tracing.scout import lines_at
 from roadhem.tracing.settings import Settings
 from roadhem.tracing.sheet import NO_DATA, OUTSIDE, Sheet
-from roadhem.tracing.stretch import LANDED, Arc, Rows, fit_arc, side, turned, walk_on
+from roadhem.tracing.span import linked, span_rows
+from roadhem.tracing.stretch import Arc, Rows, fit_arc, side, turned, walk_on
 
 
 def bridge(sheet: Sheet, rows: Rows, ended: bool, settings: Settings) -> Rows | None:
@@ -62,7 +44,7 @@ def bridge(sheet: Sheet, rows: Rows, ended: bool, settings: Settings) -> Rows | 
         proof, sure = _proof(sheet, row, rows[-1], settings)
         if sure and side(proof) * surface > 0:
             before = rows[rows[:, TRAVEL] <= kept[-1, TRAVEL]]
-            return _across(sheet, before, arc, proof, settings)
+            return _across(before, arc, proof, settings)
         tried.append(proof)
         if len(tried) >= settings.bridge_tries:
             return None
@@ -111,14 +93,14 @@ def _proof(sheet: Sheet, row: Rows, end: Rows, settings: Settings) -> tuple[Rows
     whole, code, _ = walk_on(sheet, turned(back), least, settings)
     ahead = (whole[:, X] - end[X]) * end[TX] + (whole[:, Y] - end[Y]) * end[TY]
     behind = np.flatnonzero((ahead < settings.pace.step_max) & (whole[:, TRAVEL] < 0.0))
-    whole = whole[int(np.max(behind, initial=-1)) + 1 :]
+    whole = whole[min(int(np.max(behind, initial=-1)) + 1, len(whole) - 1) :]
     seen = whole[whole[:, COAST] == 0.0]
     length = whole[-1, TRAVEL] - whole[0, TRAVEL]
     sure = length >= least or (code in (OUTSIDE, NO_DATA) and length >= 0.5 * least)
     return whole, bool(sure and np.mean(seen[:, NEAR]) >= settings.sure)
 
 
-def _across(sheet: Sheet, before: Rows, arc: Arc, proof: Rows, settings: Settings) -> Rows | None:
+def _across(before: Rows, arc: Arc, proof: Rows, settings: Settings) -> Rows | None:
     """Join what was walked before a gap and what was proved beyond it by a smooth curve."""
     begun = proof[proof[:, TRAVEL] - proof[0, TRAVEL] >= settings.bridge_drop_m]
     landing = fit_arc(turned(begun), settings.bridge_memory_m / 2)
@@ -131,42 +113,4 @@ def _across(sheet: Sheet, before: Rows, arc: Arc, proof: Rows, settings: Setting
     if abs(turn_of(leave, arrive)) > math.pi / 2:
         return None
     span = hermite(start, leave, end, arrive, settings.pace.step_max)
-    crossing = _bridge_rows(sheet, span, before[-1], begun[0], settings)
-    rest = begun[:LANDED].copy()
-    rest[:, TRAVEL] += crossing[-1, TRAVEL] + settings.pace.step_max - rest[0, TRAVEL]
-    return np.concatenate([before, crossing, rest])
-
-
-def hermite(
-    a: NDArray[np.float64], ta: NDArray[np.float64], b: NDArray[np.float64], tb: NDArray[np.float64], step_m: float
-) -> NDArray[np.float64]:
-    """Inner points (n, 4: x, y, heading) of the cubic from a to b with unit tangents ta, tb, about step_m apart.
-
-    Where both tangents fit one circular arc, the cubic follows that arc: the common choice of 4/3 tan(turn / 4) radii
-    for the handles of a cubic arc.
-    """
-    reach = float(np.hypot(*(b - a)))
-    turn = abs(turn_of(ta, tb))
-    pull = reach * (1.0 if turn < 1e-3 else 2.0 * math.tan(turn / 4) / math.sin(turn / 2))
-    u = np.linspace(0.0, 1.0, max(3, math.ceil(reach / step_m) + 1))[1:-1, None]
-    points = (2 * u**3 - 3 * u**2 + 1) * a + (u**3 - 2 * u**2 + u) * pull * ta
-    points = points + (3 * u**2 - 2 * u**3) * b + (u**3 - u**2) * pull * tb
-    heading = (6 * u**2 - 6 * u) * (a - b) + (3 * u**2 - 4 * u + 1) * pull * ta + (3 * u**2 - 2 * u) * pull * tb
-    return np.concatenate([points, heading / np.hypot(*heading.T)[:, None]], axis=1)
-
-
-def _bridge_rows(sheet: Sheet, span: NDArray[np.float64], before: Rows, after: Rows, settings: Settings) -> Rows:
-    """Rows along a bridge: properties between those of its ends, a spread that grows towards its middle."""
-    rows = np.zeros((len(span), COLUMNS))
-    rows[:, [X, Y, TX, TY]] = span
-    steps = np.hypot(*np.diff(np.concatenate([before[None, [X, Y]], span[:, :2], after[None, [X, Y]]]), axis=0).T)
-    s = np.cumsum(steps)
-    share = (s[:-1] / s[-1])[:, None]
-    mixed = [*range(KIND, KIND + 3), BESIDE, LEFT, RIGHT, SIGMA]
-    rows[:, mixed] = (1 - share) * before[mixed] + share * after[mixed]
-    nearer = np.minimum(s[:-1], s[-1] - s[:-1])
-    rows[:, SIGMA] = np.hypot(rows[:, SIGMA], settings.bridge_spread * nearer)
-    rows[:, SIGHT + 2] = 1.0
-    rows[:, TRAVEL] = before[TRAVEL] + s[:-1]
-    rows[:, FORM] = BRIDGE
-    return rows
+    return linked(before, span_rows(span, before[-1], begun[0], settings), begun)

@@ -1,4 +1,4 @@
-"""Sharp corners: found where following fails, and drawn as one vertex where two straight legs meet."""
+"""Round corners where following fails: the line that leads away is looked for at any turn, proved, and joined."""
 
 from __future__ import annotations
 
@@ -6,153 +6,193 @@ import math
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
-from roadhem.tracing.follow import CORNER, FORM, LEFT, NEAR, RIGHT, SIGMA, TRAVEL, TX, TY, X, Y
+from roadhem.tracing.follow import COAST, CORNER, FORM, LEFT, NEAR, RIGHT, TRAVEL, TX, TY, X, Y
+from roadhem.tracing.legs import Leg, Vector, between, hermite, straight, turn_of, vertex_row
 from roadhem.tracing.scout import lines_at, outward
 from roadhem.tracing.settings import Settings
-from roadhem.tracing.sheet import NO_DATA, OUTSIDE, Sheet
-from roadhem.tracing.stretch import LANDED, Rows, side, walk_on
+from roadhem.tracing.sheet import NEARNESS, NO_DATA, OUTSIDE, VALID, Sheet, sample
+from roadhem.tracing.span import linked, span_rows
+from roadhem.tracing.stretch import Rows, side, turned, walk_on
 
 
 @dataclass(frozen=True)
-class Leg:
-    """A straight through a point, with a unit direction."""
+class _Exit:
+    """A line that leads away from where following stopped, proved.
 
-    point: NDArray[np.float64]
-    direction: NDArray[np.float64]
+    Attributes
+    ----------
+    before : the leg up to the corner. after : rows of the line beyond, from where it comes into sight.
+    corner : where both meet; None at a nose, where the line turns back beside itself.
+    blur_m : how far the fields bend either side of the corner.
+    gap_m : metres not seen, both legs together.
+    """
 
-    def meets(self, other: Leg) -> NDArray[np.float64] | None:
-        """Where two legs cross; None where they are nearly parallel."""
-        cross = self.direction[0] * other.direction[1] - self.direction[1] * other.direction[0]
-        if abs(cross) < 0.2:
-            return None
-        between = other.point - self.point
-        return self.point + self.direction * (
-            (between[0] * other.direction[1] - between[1] * other.direction[0]) / cross
-        )
-
-
-def straight(rows: Rows) -> Leg:
-    """Straight of least squared distances through rows, in their direction; from the headings of one or two."""
-    xy = rows[:, [X, Y]]
-    middle = xy.mean(axis=0)
-    if len(rows) < 3:
-        heading = rows[:, [TX, TY]].mean(axis=0)
-        return Leg(middle, heading / np.hypot(*heading))
-    dx, dy = (xy - middle).T
-    theta = 0.5 * math.atan2(2.0 * float(dx @ dy), float(dx @ dx - dy @ dy))
-    direction = np.array([math.cos(theta), math.sin(theta)])
-    return Leg(middle, direction if direction @ (xy[-1] - xy[0]) >= 0 else -direction)
-
-
-def between(rows: Rows, low_m: float, high_m: float, at_m: float) -> Rows:
-    """Rows whose travel lies low_m to high_m from at_m; the nearest one beyond low_m if there are none."""
-    away = np.abs(rows[:, TRAVEL] - at_m)
-    chosen = rows[(away >= low_m) & (away <= high_m)]
-    return chosen if len(chosen) else rows[[int(np.argmin(np.abs(away - low_m)))]]
-
-
-def turn_of(a: NDArray[np.float64], b: NDArray[np.float64]) -> float:
-    """Angle from direction a to direction b, radians, positive to the left."""
-    return math.atan2(a[0] * b[1] - a[1] * b[0], float(a @ b))
-
-
-def vertex_row(corner: NDArray[np.float64], before: Rows, after: Rows) -> Rows:
-    """Row of a corner's vertex: the properties of the row before it, the larger spread of both."""
-    row = before.copy()
-    row[[X, Y]] = corner
-    heading = before[[TX, TY]] + after[[TX, TY]]
-    row[[TX, TY]] = heading / max(float(np.hypot(*heading)), 1e-9)
-    row[SIGMA] = max(before[SIGMA], after[SIGMA])
-    row[FORM] = CORNER
-    row[TRAVEL] = before[TRAVEL] + float(np.hypot(*(corner - before[[X, Y]])))
-    return row
+    before: Leg
+    after: Rows
+    corner: Vector | None
+    blur_m: float
+    gap_m: float
 
 
 def turn_corner(sheet: Sheet, rows: Rows, settings: Settings) -> Rows | None:
-    """Continue round a sharp corner where following stopped.
-
-    Looks for a line that leads away from the end at any turn, proves it by following, and joins both by the vertex
-    in which their straights meet.
+    """Continue round a corner where following stopped.
 
     Returns
     -------
-    The rows up to the corner, its vertex, and the rows proved beyond; None if there is no such line.
+    The rows up to the corner; its vertex, or a curve where the fields speak for one or the line turns back on itself;
+    and the first rows of the line beyond. None if there is no such line.
     """
-    tried: list[NDArray[np.float64]] = []
-    for way in _ways_out(sheet, rows, settings):
-        if any(abs(turn_of(way.row[[TX, TY]], other)) < settings.corner_apart for other in tried):
+    tried: list[Rows] = []
+    for row, leg, blur_m in _candidates(sheet, rows, settings):
+        if any(_same_way(row, other, settings) for other in tried):
             continue
-        tried.append(way.row[[TX, TY]])
-        start = way.row[None].copy()
-        start[0, TRAVEL] = 0.0
-        proof, code, _ = walk_on(sheet, start, settings.corner_leg_m, settings)
-        proved = proof[-1, TRAVEL] >= settings.corner_proof_m or code in (OUTSIDE, NO_DATA)
-        corner = way.leg.meets(straight(proof)) if proved else None
-        if corner is not None and np.hypot(*(corner - rows[-1, [X, Y]])) <= settings.corner_reach_m:
-            both = _join(rows, proof, corner, way.blur_m)
-            if both is not None:
-                return both
+        tried.append(row)
+        found = _proved(sheet, rows, row, leg, blur_m, settings)
+        if found is not None and (whole := _joined(sheet, rows, found, settings)) is not None:
+            return whole
         if len(tried) >= settings.corner_tries:
-            break
+            return None
     return None
 
 
-@dataclass(frozen=True)
-class _Way:
-    """A line leading away from an end: a row on it, the leg before the corner, and how far the fields bend there."""
-
-    row: Rows
-    leg: Leg
-    blur_m: float
-    score: float
+def _same_way(row: Rows, other: Rows, settings: Settings) -> bool:
+    turn = abs(turn_of(row[[TX, TY]], other[[TX, TY]]))
+    beside = Leg(other[[X, Y]], other[[TX, TY]]).beside(row[[X, Y]])
+    return turn < settings.corner_apart and abs(beside) < settings.scout_m
 
 
-def _ways_out(sheet: Sheet, rows: Rows, settings: Settings) -> list[_Way]:
-    """Lines leading away from the end of the rows, the best first."""
+def _candidates(sheet: Sheet, rows: Rows, settings: Settings) -> list[tuple[Rows, Leg, float]]:
+    """Rows of lines leading away from the end, each with the leg before the corner and its blur; the best first."""
     end, here = rows[-1], rows[-1, [X, Y]]
     blunt = straight(between(rows, settings.corner_blur_m, settings.corner_leg_m, end[TRAVEL]))
     found = outward(lines_at(sheet, here + _rings(blunt.direction, settings), settings), here)
     away = found[:, [X, Y]] - here
     distance = np.hypot(*away.T)
     fits = (found[:, NEAR] >= settings.pace.present) & (distance >= settings.corner_blur_m)
-    fits &= np.sum(away * found[:, [TX, TY]], axis=1) >= 0.8 * distance
     fits &= (found[:, LEFT] - found[:, RIGHT]) * side(rows[-20:]) > 0
     ways = []
-    for row in found[fits]:
+    for row, far in zip(found[fits], distance[fits], strict=True):
         turn = abs(turn_of(blunt.direction, row[[TX, TY]]))
-        if not settings.corner_least <= turn <= settings.corner_most:
-            continue
-        blur = max(settings.corner_blur_m, 0.5 * settings.corner_open_m / math.sin(0.5 * (math.pi - turn)))
+        blur = max(settings.corner_blur_m, 0.5 * settings.corner_open_m / math.sin(0.5 * max(math.pi - turn, 0.3)))
         leg = blunt
         if blur > settings.corner_blur_m:
             leg = straight(between(rows, blur, blur + settings.corner_leg_m, end[TRAVEL]))
-        corner = leg.meets(Leg(row[[X, Y]], row[[TX, TY]]))
-        if corner is not None and (off := float(np.hypot(*(corner - here)))) <= settings.corner_reach_m:
-            ways.append(_Way(row, leg, blur, row[NEAR] - 0.3 * off))
-    return sorted(ways, key=lambda way: (-round(way.score, 6), *way.row[[X, Y]]))
+        if turn >= settings.corner_least and _reachable(here, leg, row, turn, settings):
+            ways.append((row[NEAR] - settings.corner_far * far, row, leg, blur))
+    ways.sort(key=lambda way: (-round(way[0], 6), *way[1][[X, Y]]))
+    return [(row, leg, blur) for _, row, leg, blur in ways]
 
 
-def _rings(direction: NDArray[np.float64], settings: Settings) -> NDArray[np.float64]:
-    """Places (n, 2) on the rings around an end, up to the largest turn either way."""
+def _rings(direction: Vector, settings: Settings) -> Vector:
+    """Places (n, 2) on rings around an end."""
     ahead = math.atan2(direction[1], direction[0])
     places = []
     for radius in settings.corner_rings_m:
-        angles = ahead + np.arange(-settings.corner_most, settings.corner_most, settings.scout_m / radius)
+        angles = ahead + np.arange(-math.pi, math.pi, settings.scout_m / radius)
         places.append(radius * np.stack([np.cos(angles), np.sin(angles)], axis=-1))
     return np.concatenate(places)
 
 
-def _join(before: Rows, after: Rows, corner: NDArray[np.float64], blur_m: float) -> Rows | None:
-    """Both legs without the rows near the corner, where the fields bend, and the vertex between them."""
-    last = len(before) - 1
-    while last > 0 and np.hypot(*(before[last, [X, Y]] - corner)) < blur_m:
-        last -= 1
-    begun = np.hypot(after[:, X] - corner[0], after[:, Y] - corner[1]) >= blur_m
-    if (corner - before[last, [X, Y]]) @ before[last, [TX, TY]] <= 0 or not begun.any():
+def _reachable(here: Vector, leg: Leg, row: Rows, turn: float, settings: Settings) -> bool:
+    """Whether a line leading away can be the second leg of a corner, or the other side of a nose."""
+    place = row[[X, Y]]
+    corner = leg.meets(Leg(place, row[[TX, TY]]))
+    if corner is not None:
+        ahead = leg.along(corner) - leg.along(here)
+        longest = settings.corner_gap_m if turn >= settings.corner_gap_turn else settings.corner_reach_m
+        if -settings.corner_reach_m <= ahead <= longest and (place - corner) @ row[[TX, TY]] > 0.0:
+            return True
+    return turn >= settings.nose_turn and _beside(leg, here, place, settings)
+
+
+def _beside(leg: Leg, here: Vector, place: Vector, settings: Settings) -> bool:
+    """Whether a place lies on the other side of a nose."""
+    aside = abs(leg.beside(place))
+    return settings.nose_least_m <= aside <= settings.nose_most_m and leg.along(place) <= leg.along(here)
+
+
+def _proved(
+    sheet: Sheet, rows: Rows, row: Rows, leg: Leg, blur_m: float, settings: Settings
+) -> _Exit | None:
+    """Follow a line leading away both ways: it must begin near the corner and carry on."""
+    here = rows[-1, [X, Y]]
+    start = row[None].copy()
+    start[0, [TRAVEL, COAST]] = 0.0
+    back, _, _ = walk_on(sheet, turned(start), settings.corner_gap_m + settings.corner_rings_m[-1], settings)
+    after, code, _ = walk_on(sheet, turned(back), settings.corner_leg_m, settings)
+    begun = after[0, [X, Y]]
+    second = straight(between(after, blur_m, settings.corner_leg_m + blur_m, after[0, TRAVEL]))
+    corner, gap = leg.meets(second), float(np.hypot(*(begun - here)))
+    if corner is not None:
+        ahead, behind = leg.along(corner) - leg.along(here), second.along(begun) - second.along(corner)
+        near = min(ahead, behind) >= -settings.corner_reach_m and max(ahead, behind) <= settings.corner_gap_m
+        corner, gap = (corner, max(ahead, 0.0) + max(behind, 0.0)) if near else (None, gap)
+    if corner is None:
+        turn = abs(turn_of(leg.direction, row[[TX, TY]]))
+        if turn < settings.nose_turn or gap > settings.nose_gap_m or not _beside(leg, here, row[[X, Y]], settings):
+            return None
+    least = min(max(0.5 * gap, settings.corner_proof_m), settings.bridge_proof_m)
+    if after[-1, TRAVEL] - after[0, TRAVEL] < least and code not in (OUTSIDE, NO_DATA):
         return None
-    rest = after[int(np.argmax(begun)) :][:LANDED].copy()
-    vertex = vertex_row(corner, before[last], rest[0])
-    rest[:, TRAVEL] += vertex[TRAVEL] + np.hypot(*(rest[0, [X, Y]] - corner)) - rest[0, TRAVEL]
-    return np.concatenate([before[: last + 1], vertex[None], rest])
+    return _Exit(leg, after, corner, blur_m, gap) if gap <= settings.corner_both_m else None
+
+
+def _joined(sheet: Sheet, rows: Rows, found: _Exit, settings: Settings) -> Rows | None:
+    """Both lines without the rows near the corner, where the fields bend, and the corner between them."""
+    after = found.after
+    if found.corner is None:
+        span = hermite(
+            rows[-1, [X, Y]], found.before.direction, after[0, [X, Y]], after[0, [TX, TY]], settings.pace.step_min
+        )
+        nose = span_rows(span, rows[-1], after[0], settings)
+        nose[:, FORM] = CORNER
+        return linked(rows, nose, after)
+    last = len(rows) - 1
+    while last > 0 and np.hypot(*(rows[last, [X, Y]] - found.corner)) < found.blur_m:
+        last -= 1
+    begun = np.hypot(after[:, X] - found.corner[0], after[:, Y] - found.corner[1]) >= found.blur_m
+    if (found.corner - rows[last, [X, Y]]) @ rows[last, [TX, TY]] <= 0 or not begun.any():
+        return None
+    after = after[int(np.argmax(begun)) :]
+    vertex = vertex_row(found.corner, rows[last], after[0])
+    if found.gap_m <= settings.corner_reach_m:
+        return linked(rows[: last + 1], vertex[None], after)
+    return _round_or_sharp(sheet, rows[: last + 1], vertex, after, settings)
+
+
+def _round_or_sharp(sheet: Sheet, before: Rows, vertex: Rows, after: Rows, settings: Settings) -> Rows:
+    """Across a corner that is not seen itself: the vertex, or a curve where the fields are nearer to it."""
+    corner, a, b = vertex[[X, Y]], before[-1, [X, Y]], after[0, [X, Y]]
+    into, out = Leg(a, _unit(corner - a)), Leg(corner, _unit(b - corner))
+    tangent = min(into.along(corner), out.along(b))
+    start, end = corner - tangent * into.direction, corner + tangent * out.direction
+    step = settings.pace.step_max
+    sharp = np.concatenate([_even(a, corner, step), [[*corner, *vertex[[TX, TY]]]], _even(corner, b, step)])
+    bow = hermite(start, into.direction, end, out.direction, step)
+    curve = np.concatenate([_even(a, start, step), bow, _even(end, b, step)])
+    if _nearness(sheet, curve) > _nearness(sheet, sharp) + settings.corner_curve:
+        return linked(before, span_rows(curve, before[-1], after[0], settings), after)
+    span = span_rows(sharp, before[-1], after[0], settings)
+    span[np.all(sharp[:, :2] == corner, axis=1), FORM] = CORNER
+    return linked(before, span, after)
+
+
+def _unit(vector: Vector) -> Vector:
+    return np.asarray(vector / np.hypot(*vector))
+
+
+def _even(a: Vector, b: Vector, step_m: float) -> Vector:
+    """Inner points (n, 4: x, y, heading) of the straight from a to b, about step_m apart."""
+    reach = float(np.hypot(*(b - a)))
+    share = np.linspace(0.0, 1.0, max(1, math.ceil(reach / step_m)) + 1)[1:-1, None]
+    return np.concatenate([a + share * (b - a), np.tile((b - a) / max(reach, 1e-9), (len(share), 1))], axis=1)
+
+
+def _nearness(sheet: Sheet, path: Vector) -> float:
+    """Mean nearness at the points of a path."""
+    values, total = np.zeros(1), 0.0
+    for x, y, _, _ in path:
+        if sheet.run(sample, x, y, values) == VALID:
+            total += values[NEARNESS]
+    return total / max(len(path), 1)

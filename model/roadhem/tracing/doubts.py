@@ -10,8 +10,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roadhem.tracing.compiled import compiled
-from roadhem.tracing.corner import between, straight, turn_of
 from roadhem.tracing.follow import BESIDE, CORNER, FORM, NEAR, SIGMA, TRAVEL, TX, TY, X, Y
+from roadhem.tracing.legs import between, straight, turn_of
 from roadhem.tracing.result import Doubt
 from roadhem.tracing.ridge import buffer
 from roadhem.tracing.settings import Settings

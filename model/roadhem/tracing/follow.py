@@ -118,6 +118,25 @@ def advance(table, origin, last, pace, values):  # type: ignore[no-untyped-def]
 
 
 @compiled
+def end_row(table, origin, rows, n, x, y, pace, values):  # type: ignore[no-untyped-def]
+    """Make the last row lie beside (x, y), where the line was seen to end; returns a code as `sample`, and n anew."""
+    last = rows[n - 1]
+    short = (x - last[X]) * last[TX] + (y - last[Y]) * last[TY]
+    if abs(short) > pace.step_max:
+        return VALID, n
+    row = rows[n]
+    x, y = last[X] + short * last[TX], last[Y] + short * last[TY]
+    code = put_row(table, origin, row, x, y, last[TX], last[TY], values)
+    if code != VALID:
+        return code, n
+    row[TRAVEL], row[COAST], row[BEND], row[FORM] = last[TRAVEL] + short, 0.0, last[BEND], last[FORM]
+    if short > 0.0:
+        return VALID, n + 1
+    rows[n - 1] = row
+    return VALID, n
+
+
+@compiled
 def follow(table, origin, rows, n, budget, pace, values):  # type: ignore[no-untyped-def]
     """Follow the line from the last row on.
 
@@ -150,6 +169,11 @@ def follow(table, origin, rows, n, budget, pace, values):  # type: ignore[no-unt
         if code in (ENDED, FADED):
             while n > 1 and rows[n - 1, COAST] > 0.0:
                 n -= 1
+            if code == ENDED:
+                x, y = x + values[0, DX], y + values[0, DY]
+                missing, n = end_row(table, origin, rows, n, x, y, pace, values)
+                if missing == MISSING:
+                    code = MISSING
         if code != VALID:
             return code, n, -1
         row = rows[n]

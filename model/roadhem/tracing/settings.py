@@ -37,7 +37,7 @@ class Pace(NamedTuple):
     agree: float = 0.15
     reach: float = 0.3
     gate: float = 0.22
-    present: float = 0.35
+    present: float = 0.25
     beyond: float = 0.25
     axis_clear: float = 0.3
     turn_max: float = 0.7
@@ -85,8 +85,8 @@ class Settings:
     loop_tail_m: float = 4.0
     """Metres of its beginning that a loop may lose where it closes."""
 
-    # Sharp corners.
-    corner_rings_m: tuple[float, ...] = (0.7, 1.0, 1.4, 2.0)
+    # Corners.
+    corner_rings_m: tuple[float, ...] = (0.7, 1.0, 1.4, 2.0, 2.8, 3.8)
     """Radii around the end at which lines leading away are looked for."""
     corner_blur_m: float = 0.6
     """Metres either side of a corner in which the fields bend ..."""
@@ -95,11 +95,25 @@ class Settings:
     corner_leg_m: float = 2.4
     """Metres either side of a corner to which straights are fitted."""
     corner_proof_m: float = 1.2
-    """Metres a line beyond a corner must be followed."""
+    """Metres a line beyond a corner must be followed at the least."""
     corner_reach_m: float = 0.8
-    """Metres from where following stopped within which the straights must meet."""
+    """A corner that is seen lies within this of where following stopped."""
+    corner_gap_m: float = 3.0
+    corner_both_m: float = 4.5
+    """Metres of a leg, and of both, that may be hidden at a corner."""
+    corner_far: float = 0.1
+    """What a metre to the line beyond costs, in nearness."""
+    corner_curve: float = 0.03
+    """By how much nearer, on average, a curve must be to the fields than a sharp corner."""
     corner_least: float = math.radians(20.0)
-    corner_most: float = math.radians(155.0)
+    corner_gap_turn: float = math.radians(35.0)
+    """Least turn of a corner, and of one that is hidden."""
+    nose_turn: float = math.radians(150.0)
+    """A line that turns further and makes no corner turns back beside itself: a nose."""
+    nose_least_m: float = 0.25
+    nose_most_m: float = 1.6
+    nose_gap_m: float = 2.4
+    """Distance of a nose's sides, and metres between where each is seen."""
     corner_apart: float = math.radians(20.0)
     corner_tries: int = 4
 

@@ -8,8 +8,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roadhem.tracing.compiled import compiled
-from roadhem.tracing.corner import between, straight, turn_of, vertex_row
 from roadhem.tracing.follow import FOLLOWED, FORM, TRAVEL, TX, TY, X, Y
+from roadhem.tracing.legs import between, straight, turn_of, vertex_row
 from roadhem.tracing.settings import Settings
 from roadhem.tracing.stretch import Rows
 

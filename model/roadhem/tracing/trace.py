@@ -22,6 +22,9 @@ from roadhem.tracing.walk import Line, Run, plain, whole
 
 LIMIT_M = 2000.0
 
+LOOK_M = 60.0
+"""Metres beyond a line's reach that may be looked at: across a gap, round a corner."""
+
 
 @dataclass(frozen=True)
 class Missing:
@@ -59,7 +62,7 @@ def attempt(
     The trace; why there is none; or the pages without which neither can be told.
     """
     places = np.asarray(points, np.float64).reshape(-1, 2)
-    sheet = Sheet(view, places, limit_m + radius_m + 1.0)
+    sheet = Sheet(view, places, limit_m + radius_m + LOOK_M)
     try:
         line = follow_seed(sheet, places[0], radius_m, limit_m, settings)
         if isinstance(line, Unplaced):
