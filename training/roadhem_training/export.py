@@ -1,6 +1,7 @@
-"""From a training run to a model folder: weights.onnx and its card.
+r"""From a training run to a model folder: weights.onnx and its card.
 
-    python -m roadhem_training.export --run build/fit/run.pt --pool build/held_out --name NAME --out model/roadhem/shelf
+    python -m roadhem_training.export --run build/fit/run.pt --pool build/pool --held-out build/held_out \
+        --name NAME --out model/roadhem/shelf
 """
 
 from __future__ import annotations
@@ -107,7 +108,9 @@ def calibrate(net: FieldNet, folder: Path) -> Calibration:
     return Calibration(*(round(float(v), 4) for v in parameters))
 
 
-def card(net: FieldNet, name: str, weights: Path, calibration: Calibration, training: dict[str, Any]) -> dict[str, Any]:
+def card(
+    net: FieldNet, name: str, weights: Path, calibration: Calibration, training: dict[str, Any]
+) -> dict[str, Any]:
     """Return everything a user of the weights must know."""
     return {
         "name": name,
