@@ -25,7 +25,7 @@ Rng = np.random.Generator
 
 WIDTH: dict[Span, float] = {(2.8, 4.5): 0.3, (4.5, 6.5): 0.4, (6.5, 8.5): 0.3}
 SURFACE = {"asphalt": 0.8, "concrete": 0.2}
-BEND_RADIUS = {(25.0, 60.0): 0.25, (60.0, 150.0): 0.4, (150.0, 500.0): 0.35}
+BEND_RADIUS = {(25.0, 60.0): 0.15, (60.0, 160.0): 0.35, (160.0, 500.0): 0.5}
 BEND_LENGTH, STRAIGHT_LENGTH, RAMP_LENGTH = (15.0, 70.0), (10.0, 120.0), (10.0, 30.0)
 SIDE_ROAD_EVERY = (35.0, 110.0)
 CURBED = 0.15  # share of sides with a curb all along, as in villages

@@ -14,6 +14,7 @@ from roadhem_training.scenes.layout.alignment import quad_segments
 from roadhem_training.scenes.layout.odds import between, chance, pick, pick_between
 from roadhem_training.scenes.layout.overlay import joined, less
 from roadhem_training.scenes.layout.plan import Edging, Island, Junction, Leg, Road
+from roadhem_training.scenes.layout.shapes import oriented_box
 from roadhem_training.scenes.layout.surface import GRID
 
 END = 2.0  # a road that meets another this near its own end stops there, metres
@@ -60,6 +61,7 @@ def junctions(
         legs.sort(key=lambda leg: leg.heading)
         if len(legs) < 3:
             continue
+        _square_off(roads, legs, x, y)
         wide = max(roads[leg.road].half for leg in legs) > 3.2
         alone = all(math.hypot(x - a, y - b) > ROUNDABOUT_ALONE for a, b in met if (a, b) != (x, y))
         if wide and alone and chance(rng, roundabouts):
@@ -80,6 +82,21 @@ def _legs(road: Road, index: int, x: float, y: float) -> list[Leg]:
         back = road.axis.heading(s - 0.5) + math.pi
         legs.append(Leg(index, s, -1, (back + math.pi) % (2 * math.pi) - math.pi, 0.0))
     return legs
+
+
+def _square_off(roads: list[Road], legs: list[Leg], x: float, y: float) -> None:
+    """Keep the square ends of roads that stop here on their own side of a road that goes through."""
+    count = {leg.road: sum(other.road == leg.road for other in legs) for leg in legs}
+    through = next((leg for leg in legs if count[leg.road] == 2), None)
+    if through is None:
+        return
+    for leg in legs:
+        if count[leg.road] == 1:
+            side = math.copysign(1.0, math.sin(leg.heading - through.heading))
+            deep = roads[leg.road].half + 1.0
+            away = through.heading - side * 0.5 * math.pi
+            middle = x + 0.5 * deep * math.cos(away), y + 0.5 * deep * math.sin(away)
+            roads[leg.road].beyond.append(oriented_box(*middle, 2 * deep, deep, through.heading))
 
 
 def _arm(road: Road, leg: Leg, reach: float) -> Polygon:
@@ -110,8 +127,10 @@ def _crossing(
         radii.append(radius)
         if radius > 0.05:
             arms = [_arm(roads[g.road], g, max(bare) + tangent + 3.0) for g in (leg, legs[m])]
-            corners += closing(joined(arms), radius)
-            if slip:
+            middle = np.array([math.cos(leg.heading + 0.5 * angle), math.sin(leg.heading + 0.5 * angle)])
+            found = closing(joined(arms), radius)
+            corners += [p for p in found if (shapely.get_coordinates(p.centroid)[0] - [x, y]) @ middle > 0]
+            if slip and corners:
                 islands += _slip_island(rng, corners[-1], arms, roads[leg.road].left)
     legs = [Leg(g.road, g.station, g.sign, g.heading, max(r, 0.0)) for g, r in zip(legs, reach, strict=True)]
     return Junction(x, y, tuple(legs), tuple(corners), tuple(radii)), islands

@@ -13,7 +13,7 @@ from roadhem_training.scenes.layout.plan import Island, Plan, Road
 
 MEDIAN_WIDTH = (0.5, 3.0)
 WIDE_MEDIAN = (3.0, 8.0)
-LEAST_LANE = 2.75  # metres of carriageway that an island leaves on each side
+LEAST_LANE = 3.0  # metres of carriageway that an island leaves on each side
 OPENING = (6.0, 12.0)  # of a median, where one may turn
 OPENING_EVERY = (30.0, 80.0)
 

@@ -35,6 +35,7 @@ RAMP: Span = (1.2, 5.0)
 ISLAND_FILL = {
     "grass": 0.3, "mown": 0.1, "planting": 0.2, "pavers": 0.15, "setts": 0.05, "asphalt": 0.08, "slabs": 0.12,
 }  # fmt: skip
+SHOULDER: Mapping[Span, float] = {(0.0, 0.0): 0.15, (0.15, 0.5): 0.4, (0.5, 2.0): 0.45}
 FOOTWAY_LIKE_ROAD = 0.12  # share of footways beside asphalt that are asphalt too
 THIN_STRIP = 0.12  # share of sides with a strip 0.3–0.9 m wide behind the curb that makes a line of its own
 GUTTER_ODDS = {"stone": 0.5, "asphalt": 0.25, "setts": 0.25}
@@ -84,7 +85,7 @@ LARGE_FRAME = 200.0
 STREETS: Mapping[str, StreetOdds] = {
     "old_town": StreetOdds(
         block=(33, 56), skew=0.16, warp=0.35, crossing=0.35,
-        width={"main": (8.5, 14), "street": (5.5, 9.5), "alley": (3.2, 5.5), "close": (3.5, 6)},
+        width={"main": (8.5, 14), "street": (5.5, 10.5), "alley": (3.2, 5.5), "close": (3.5, 6)},
         surface={"asphalt": 0.72, "setts": 0.22, "concrete": 0.06},
         gutter=0.4, stone=0.8, verge=0.15, footway=0.96, footway_width=(1.2, 4.0),
         median=0.25, parking=0.6, marked=0.6, driveway_every=(25, 60),

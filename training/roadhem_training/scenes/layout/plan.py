@@ -5,9 +5,10 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 
-from shapely.geometry import Polygon
+from shapely.geometry import MultiPolygon, Polygon
 
 from roadhem_training.scenes.layout.alignment import Alignment
+from roadhem_training.scenes.layout.overlay import joined, less
 from roadhem_training.scenes.world import Body, Cover, Crown, OtherLine, Paint
 
 
@@ -78,6 +79,7 @@ class Road:
     right, left : edging of its two sides.
     parking : (right, left), whether cars may stand along the side.
     shoulders : (right, left), widths of paved shoulder outside the lanes.
+    beyond : what its square ends would wrongly cover on the far side of the roads they meet.
     """
 
     axis: Alignment
@@ -93,6 +95,7 @@ class Road:
     marked: bool = True
     shoulders: tuple[float, float] = (0.0, 0.0)
     direction: float = 0.0
+    beyond: list[Polygon] = field(default_factory=list)
 
     @property
     def half(self) -> float:
@@ -100,9 +103,10 @@ class Road:
         return 0.5 * self.width
 
     @property
-    def area(self) -> Polygon:
+    def area(self) -> Polygon | MultiPolygon:
         """The whole carriageway."""
-        return self.axis.strip(0.0, self.axis.length, -self.half, self.half)
+        whole = self.axis.strip(0.0, self.axis.length, -self.half, self.half)
+        return less(whole, joined(self.beyond)) if self.beyond else whole
 
 
 @dataclass(frozen=True)

@@ -182,7 +182,7 @@ def _side(rng: Rng, rules: StreetOdds, family: Family, flush: bool, material: st
 def flush_edging(rng: Rng) -> Edging:
     """The end of the pavement with a loose shoulder or grass right beside it, at times a row of stones."""
     shoulder = pick(rng, {"grass": 0.35, "dry_grass": 0.15, "gravel": 0.25, "soil": 0.25})
-    wide = rng.uniform(0.25, 2.0) if chance(rng, 0.8) else 0.0
+    wide = pick_between(rng, odds.SHOULDER)
     stone = rng.uniform(0.08, 0.25) if chance(rng, 0.15) else 0.0
     return Edging(
         "flush", 0.0, stone=stone, stone_material=pick(rng, odds.STONE_ODDS), verge=wide, verge_material=shoulder
