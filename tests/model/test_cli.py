@@ -205,13 +205,15 @@ def test_a_fault_of_ours_leaves_a_log(
     assert "ZeroDivisionError: of all things" in log.read_text()
 
 
-def test_interrupting_for_real(place: Path) -> None:
+@pytest.mark.parametrize("workers", [1, 2])
+def test_interrupting_for_real(place: Path, workers: int) -> None:
     """Should end on Ctrl-C in one sentence, with the old file as it was."""
     (place / "o.gpkg").write_text("old")
     points = [(EAST + 5 + 0.01 * n, NORTH - 20.1) for n in range(3000)]
     write_seeds(place / "many.gpkg", points)
     line = [sys.executable, "-m", "roadhem.cli", "trace", "tile.tif", "--seeds", "many.gpkg", "--out", "o.gpkg"]
-    process = subprocess.Popen([*line, "--model", "model"], stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True)
+    line += ["--model", "model", "--workers", str(workers)]
+    process = subprocess.Popen(line, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True)
     journal = place / "o.gpkg.journal"
     until = time.monotonic() + 60
     while time.monotonic() < until and not (journal.exists() and journal.read_text().count("\n") > 1):
@@ -349,3 +351,18 @@ def test_page_needs_nothing_else(tmp_path: Path) -> None:
     assert "not a survey" in html
     assert html.count("<li>") == len(CAUTIONS)
     assert "licensed" in html
+
+
+@pytest.mark.parametrize(
+    "seed", [3, pytest.param(4, marks=pytest.mark.long), pytest.param(5, marks=pytest.mark.long)]
+)
+def test_demo_makes_all_it_promises(tmp_path: Path, seed: int) -> None:
+    """Should run from a town to its page by the public verbs, and say where everything is."""
+    demo = Path(__file__).parents[2] / "tools" / "demo.py"
+    line = [sys.executable, str(demo), "--seed", str(seed), "--size", "768", "--out", str(tmp_path)]
+    done = subprocess.run(line, capture_output=True, text=True, encoding="utf-8", check=False)
+    assert done.returncode == 0, done.stderr
+    for name in ("lines.gpkg", "lines.png", "index.html"):
+        assert str(tmp_path / name) in done.stdout
+        assert (tmp_path / name).stat().st_size > 10_000
+    assert re.search(r"completeness +\d\.\d{3}", done.stdout)

@@ -19,7 +19,7 @@ from drawn import PIXEL, drawn_model, drawn_pixels, write_seeds, write_tile
 from made_session import EAST, NORTH, STREETS, MadeSession, on_street, open_made, open_slow, streets
 from numpy.typing import NDArray
 
-from roadhem.errors import BadInput
+from roadhem.errors import BadInput, RoadhemError
 from roadhem.jobs.journal import Journal, packed, unpacked
 from roadhem.jobs.mark import MarkJob, mark_tiles
 from roadhem.jobs.session import Inputs, along_curve, open_session
@@ -232,6 +232,28 @@ def test_faults_of_workers_are_told(job: TraceJob) -> None:
 def open_faulty(inputs: Inputs) -> MadeSession:
     """Open streets on a tile that turns out to be broken."""
     return MadeSession(faults=["made.tif is cut short."])
+
+
+def test_a_lost_worker_is_told(job: TraceJob) -> None:
+    """Should say that a worker was lost, as when memory runs out, and leave the journal to go on with."""
+    with pytest.raises(RoadhemError, match="worker process was lost.*--resume"):
+        trace_tiles(TraceJob(INPUTS, job.seeds, job.out, workers=2), open_deadly, silent)
+    assert not job.out.exists()
+    assert Path(f"{job.out}.journal").exists()
+
+
+class DeadlySession(MadeSession):
+    """Ends its process at the first trace."""
+
+    def trace(self, points: NDArray[np.float64]) -> Trace | Unplaced:
+        """End as the system ends a process that takes too much memory."""
+        os.kill(os.getpid(), signal.SIGKILL)
+        return super().trace(points)
+
+
+def open_deadly(inputs: Inputs) -> MadeSession:
+    """Open streets that nobody survives."""
+    return DeadlySession()
 
 
 def test_neighbours_follow_each_other_on_the_curve() -> None:

@@ -69,7 +69,15 @@ def trace_apart(inputs: Inputs, opener: Opener, tasks: Sequence[Task], workers: 
             "A worker process was lost, maybe for want of memory; run again with --resume and fewer --workers"
         ) from error
     finally:
-        pool.shutdown(wait=not waiting, cancel_futures=True)
+        if waiting:
+            _end_workers()
+        pool.shutdown(cancel_futures=True)
+
+
+def _end_workers() -> None:
+    """End the workers at once; what they have not handed in is lost, which the journal allows for."""
+    for worker in multiprocessing.active_children():
+        worker.terminate()
 
 
 def _chunks(tasks: Sequence[Task]) -> list[Sequence[Task]]:
