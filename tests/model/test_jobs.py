@@ -236,7 +236,7 @@ def open_faulty(inputs: Inputs) -> MadeSession:
 
 def test_a_lost_worker_is_told(job: TraceJob) -> None:
     """Should say that a worker was lost, as when memory runs out, and leave the journal to go on with."""
-    with pytest.raises(RoadhemError, match="worker process was lost.*--resume"):
+    with pytest.raises(RoadhemError, match=r"worker process was lost.*--resume"):
         trace_tiles(TraceJob(INPUTS, job.seeds, job.out, workers=2), open_deadly, silent)
     assert not job.out.exists()
     assert Path(f"{job.out}.journal").exists()
