@@ -42,7 +42,8 @@ def trace(
 ) -> None:
     """Trace the edge beside every seed of a set of tiles.
 
-    Writes the layers edges, stretches, doubts, unplaced and seeds. Each edge carries its spread: one standard error
+    Writes the layers edges, stretches, doubts, unplaced and seeds; OUT.geojson holds the edges in longitude and
+    latitude, with the other layers beside it as OUT.LAYER.geojson. Each edge carries its spread: one standard error
     in metres, relative to the image.
 
     \b
