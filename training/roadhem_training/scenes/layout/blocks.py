@@ -9,7 +9,7 @@ import shapely
 from shapely.geometry import LineString, Polygon
 from shapely.geometry.base import BaseGeometry
 
-from roadhem_training.scenes.layout.odds import between, chance, pick
+from roadhem_training.scenes.layout.odds import between, chance, pick, pick_between
 from roadhem_training.scenes.layout.overlay import inset, less, polygons, shared
 from roadhem_training.scenes.layout.shapes import oriented_box
 from roadhem_training.scenes.layout.stretches import OpenChain, Stretch
@@ -22,7 +22,7 @@ FENCED = {
 }  # fmt: skip
 THICKNESS = {"wall": 0.25, "fence": 0.08, "hedge": 0.8}
 PERIMETER_DEPTH, PERIMETER_WIDTH, PERIMETER_HEIGHT = (8.0, 13.0), (6.0, 16.0), (6.0, 19.0)
-SETBACK = (2.5, 8.0)
+SETBACK = {(0.2, 2.5): 0.2, (2.5, 8.0): 0.8}
 LOWEST_ROOF_LINE = 3.0  # metres; outlines of roofs are drawn as lines that mislead
 
 
@@ -65,7 +65,7 @@ def _house(rng: np.random.Generator, area: Polygon, top: float, heading: float) 
 
 def _detached(rng: np.random.Generator, plot: Polygon, front: list[Stretch]) -> list[Body]:
     """Single houses facing the street, some with a wing."""
-    setback = between(rng, SETBACK)
+    setback = pick_between(rng, SETBACK)
     room = plot.buffer(-1.0)
     shapely.prepare(room)
     out: list[Body] = []

@@ -15,18 +15,19 @@ from roadhem_training.scenes.layout.country import plan_country
 from roadhem_training.scenes.layout.motorway import plan_motorway
 from roadhem_training.scenes.layout.odds import STYLE_ODDS, pick
 from roadhem_training.scenes.layout.open_land import plan_open_land
-from roadhem_training.scenes.layout.overlay import less
+from roadhem_training.scenes.layout.overlay import clipped, less
 from roadhem_training.scenes.layout.plan import Plan
 from roadhem_training.scenes.layout.streets import plan_town
 from roadhem_training.scenes.layout.stretches import Stretch, boundary_stretches
 from roadhem_training.scenes.layout.surface import unite
-from roadhem_training.scenes.world import MARGIN, Cover, TrueEdge, World
+from roadhem_training.scenes.world import MARGIN, Cover, OtherLine, TrueEdge, World
 
 Rng = np.random.Generator
 
 SMALLEST, LARGEST = 25.0, 600.0
 SLOPE = 0.02  # standard deviation of the ground's slope
 CROSSFALL = (0.0, 0.03)
+ON_ROAD, ON_LAND = ("gutter_seam", "joint"), ("curb_back", "verge", "footway")
 PLANNERS: dict[str, Callable[[Rng, float, str], Plan]] = {
     "old_town": plan_town,
     "suburb": plan_town,
@@ -85,12 +86,27 @@ def _furnish(rng: Rng, plan: Plan, world: World, surface: MultiPolygon) -> None:
     for piece in pieces:
         world.ground += paving.encroach(rng, piece)
         world.crowns += trees.avenue(rng, season, piece)
-        world.bodies += clutter.along(rng, piece)
+        bodies, lines = clutter.along(rng, piece)
+        world.bodies += bodies
+        world.others += lines
     world.crowns += plan.crowns
     world.paints, lines = markings.paint(rng, plan, surface)
     world.others += lines
     cars = plan.bodies + traffic.parked(rng, plan, pieces) + traffic.moving(rng, plan, surface)
     world.bodies += traffic.apart(cars)
+    world.others = _trimmed(world.others, frame, surface)
+
+
+def _trimmed(lines: list[OtherLine], frame: Polygon, surface: MultiPolygon) -> list[OtherLine]:
+    """Lines cut to where they are: on the road, on the land, and within the frame and its margin."""
+    road = [line for line in lines if line.what in ON_ROAD]
+    ground = [line for line in lines if line.what in ON_LAND]
+    rest = [line for line in lines if line.what not in ON_ROAD + ON_LAND]
+    out = []
+    for group, area in ((road, surface), (ground, less(frame, surface)), (rest, frame)):
+        pieces = clipped([line.line for line in group], area)
+        out += [OtherLine(p, line.what) for line, own in zip(group, pieces, strict=True) for p in own]
+    return out
 
 
 def _changed(rng: Rng, plan: Plan, whole: list[Stretch]) -> tuple[list[Stretch], list[Cover]]:

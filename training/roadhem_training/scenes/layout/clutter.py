@@ -5,23 +5,28 @@ from __future__ import annotations
 import math
 
 import numpy as np
-from shapely.geometry import Point
+import shapely
+from shapely.geometry import LineString, Point
 
 from roadhem_training.scenes.layout.odds import chance, pick
+from roadhem_training.scenes.layout.overlay import polygons
 from roadhem_training.scenes.layout.shapes import oriented_box
 from roadhem_training.scenes.layout.stretches import OpenChain, Stretch
-from roadhem_training.scenes.world import Body
+from roadhem_training.scenes.world import Body, OtherLine
 
 LAMPS, LAMP_EVERY, LAMP_HEIGHT = 0.35, (18.0, 35.0), (4.0, 9.0)
 BOLLARDS, BOLLARD_EVERY = 0.06, (1.2, 2.5)
-BINS, SHELTER, RAIL = 0.15, 0.04, 0.05
+BINS, SHELTER = 0.15, 0.04
+BARRIERS = {"none": 0.87, "rail": 0.05, "wall": 0.05, "hedge": 0.03}
+THICKNESS = {"rail": 0.12, "wall": 0.3, "hedge": 0.8}
+TOP = {"rail": (0.7, 1.1), "wall": (0.4, 2.2), "hedge": (0.6, 1.8)}
 BEHIND = (0.35, 0.7)  # metres from the edge to a post
 
 
-def along(rng: np.random.Generator, stretch: Stretch) -> list[Body]:
-    """What stands beside one stretch of edge."""
+def along(rng: np.random.Generator, stretch: Stretch) -> tuple[list[Body], list[OtherLine]]:
+    """What stands beside one stretch of edge, and the lines it makes."""
     if stretch.line.length < 8 or stretch.edging.kind == "lowered":
-        return []
+        return [], []
     chain, back = OpenChain(stretch.line), stretch.edging.stone + rng.uniform(*BEHIND)
     out: list[Body] = []
     if chance(rng, LAMPS):
@@ -35,12 +40,23 @@ def along(rng: np.random.Generator, stretch: Stretch) -> list[Body]:
     if stretch.edging.footway > 1.8 and stretch.line.length > 20 and chance(rng, SHELTER):
         x, y, heading = _behind(chain, 0.5 * chain.length, stretch.edging.stone + stretch.edging.verge + 1.4)
         out.append(Body(oriented_box(x, y, rng.uniform(3, 5), 1.5, heading), 2.4, "shelter", 2.2, rng.random()))
-    if chance(rng, RAIL):
-        line = chain.piece(0.1 * chain.length, 0.9 * chain.length).offset_curve(-back)
-        if not line.is_empty:
-            top = pick(rng, {0.75: 0.6, 1.1: 0.4})
-            out.append(Body(line.buffer(0.06, cap_style="flat"), top, "rail", 0.0, rng.random()))
-    return out
+    barrier = pick(rng, BARRIERS)
+    if barrier == "none":
+        return out, []
+    bodies, lines = _barrier(rng, chain, back + 0.5 * THICKNESS[barrier], barrier)
+    return out + bodies, lines
+
+
+def _barrier(
+    rng: np.random.Generator, chain: OpenChain, back: float, what: str
+) -> tuple[list[Body], list[OtherLine]]:
+    """A guard rail, wall or hedge close behind the edge."""
+    a, b = np.sort(rng.uniform(0, chain.length, 2))
+    line = chain.piece(a, b).offset_curve(-back) if b - a > 5 else LineString()
+    area = line.buffer(0.5 * THICKNESS[what], cap_style="flat", join_style="mitre")
+    bodies = [Body(p, rng.uniform(*TOP[what]), what, 0.0, rng.random()) for p in polygons(area)]
+    name = "hedge" if what == "hedge" else "wall"
+    return bodies, [OtherLine(g, name) for g in shapely.get_parts(line) if isinstance(g, LineString) and bodies]
 
 
 def _behind(chain: OpenChain, s: float, back: float) -> tuple[float, float, float]:

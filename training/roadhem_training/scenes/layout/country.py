@@ -71,7 +71,7 @@ def plan_country(rng: Rng, size: float, style: str) -> Plan:
     plan.junctions, plan.islands = junctions(rng, plan.roads, window, roundabouts=0.05)
     _curbed_pieces(rng, plan)
     dead_ends(rng, plan, window)
-    plan.islands += medians(rng, plan, 0.08)
+    plan.islands += medians(rng, plan, 0.05)
     place_lots(rng, plan, rough_surface(plan), window, 0.15)
     _tracks(rng, plan)
     return plan

@@ -40,11 +40,14 @@ def change(
     places = sorted(_planned(plan, stretch, changes), key=lambda p: p[0])
     places = [p for k, p in enumerate(places) if k == 0 or p[0] > places[k - 1][1]]
     drives: list[Place] = []
+    beside: list[Place] = []
     fast = stretch.road >= 0 and plan.roads[stretch.road].rank in NO_DRIVEWAYS
     if stretch.edging.kind == "raised" and stretch.line.length > 8 and not fast:
         drives = _driveways(rng, chain, stretch.edging, places, plan.driveway_every)
+    elif stretch.edging.kind == "flush" and stretch.line.length > 8 and not fast:
+        beside = _driveways(rng, chain, stretch.edging, places, plan.driveway_every)
     material, tone = pick(rng, DRIVE_MATERIAL), float(rng.normal(0, 0.3))
-    covers = [c for a, b, _ in drives for c in _paving(rng, chain, a, b, stretch.edging, material, tone)]
+    covers = [c for a, b, _ in drives + beside for c in _paving(rng, chain, a, b, stretch.edging, material, tone)]
     return cut(stretch, sorted(places + drives, key=lambda p: p[0])), covers
 
 

@@ -16,7 +16,7 @@ from shapely.geometry import LineString, MultiPolygon, Polygon
 from shapely.geometry.base import BaseGeometry
 
 from roadhem_training.scenes.layout.odds import between, chance, pick
-from roadhem_training.scenes.layout.overlay import joined, less, shared
+from roadhem_training.scenes.layout.overlay import clipped, joined, less, shared
 from roadhem_training.scenes.layout.plan import Crosswalk, Leg, Plan, Road
 from roadhem_training.scenes.world import OtherLine, Paint
 
@@ -36,6 +36,7 @@ CURB_EDGE_LINE = 0.12  # share of streets with curbs that have edge lines all th
 FLUSH_EDGE_LINE = 0.7
 EDGE_LINE_IN = (0.1, 0.3)
 CYCLE_LANE, CYCLE_WIDTH = 0.18, (1.25, 2.0)
+LEAST_LINE = 2.0
 NO_STOPPING = 0.08  # painted along the curb
 
 
@@ -62,12 +63,17 @@ def paint(rng: Rng, plan: Plan, surface: MultiPolygon) -> tuple[list[Paint], lis
             road = plan.roads[leg.road]
             if road.marked and road.lanes >= 2:
                 paints += [Paint(g, "white", wears[leg.road]) for g in _at_leg(rng, plan, road, leg)]
-    return on(surface, paints + plan.paints), [line for line in lines if line.line.length > 2]
+    pieces = clipped([line.line for line in lines], surface, LEAST_LINE)
+    return on(surface, paints + plan.paints), [OtherLine(p, "marking") for own in pieces for p in own]
 
 
 def _lane_lines(rng: Rng, road: Road, colour: str) -> list[tuple[float, float, bool, str]]:
     """(offset, width factor, solid, colour) of the lines between lanes."""
     right, left = road.shoulders
+    if road.median:
+        lane = 0.5 * (road.width - road.median) / (road.lanes // 2)
+        inner = [0.5 * road.median + k * lane for k in range(1, road.lanes // 2)]
+        return [(side * d, 1.0, False, "white") for d in inner for side in (-1, 1)]
     lane = (road.width - right - left) / road.lanes
     out = []
     for k in range(1, road.lanes):

@@ -18,19 +18,23 @@ OPENING = (6.0, 12.0)  # of a median, where one may turn
 OPENING_EVERY = (30.0, 80.0)
 
 
-def medians(rng: np.random.Generator, plan: Plan, share: float) -> list[Island]:
-    """Islands on the axes of the plan's roads; `share` of main roads has medians all along."""
+def median_width(rng: np.random.Generator, width: float) -> float:
+    """Width of a median for a road of `width` metres; 0 where it has no room for one."""
+    room = width - 2 * LEAST_LANE
+    if room < MEDIAN_WIDTH[0]:
+        return 0.0
+    return min(room, between(rng, WIDE_MEDIAN if room > 7 and chance(rng, 0.6) else MEDIAN_WIDTH))
+
+
+def medians(rng: np.random.Generator, plan: Plan, short: float) -> list[Island]:
+    """The medians of the plan's roads, and on a `short` share of other stretches an island before a junction."""
     out = []
     for k, road in enumerate(plan.roads):
         room = road.width - 2 * LEAST_LANE
-        if road.oneway or room < MEDIAN_WIDTH[0]:
-            continue
-        along = chance(rng, share * (2.0 if road.rank == "main" else 0.7))
-        for a, b in plan.clear_spans(k):
-            if along and b - a > 14:
-                width = min(room, between(rng, WIDE_MEDIAN if room > 7 and chance(rng, 0.6) else MEDIAN_WIDTH))
-                out += _opened(rng, road, a + rng.uniform(1, 5), b - rng.uniform(1, 5), width)
-            elif chance(rng, 0.4 * share) and b - a > 14:
+        for a, b in plan.clear_spans(k, 14.0):
+            if road.median:
+                out += _opened(rng, road, a + rng.uniform(1, 5), b - rng.uniform(1, 5), road.median)
+            elif room > MEDIAN_WIDTH[0] and not road.oneway and chance(rng, short):
                 at = a + rng.uniform(3, 5) if chance(rng, 0.5) else b - rng.uniform(8, 12)
                 out.append(_island(rng, road, at, at + rng.uniform(3, 8), min(room, rng.uniform(0.8, 2.5))))
     return [i for i in out if i.area.area > 0.8]

@@ -79,6 +79,8 @@ class StreetOdds:
     in_block: bool = False
 
 
+BOULEVARD, BOULEVARD_WIDTH = 0.12, (17.0, 30.0)  # 24.4–30.5 m curb to curb in one handbook, less elsewhere
+SHORT_ISLAND = 0.08  # share of wide stretches with an island at one end
 BLOCK_SCALE = {1.0: 0.75, 1.5: 0.25}  # some places have larger blocks
 BLOCK_SCALE_LARGE = {1.0: 0.4, 1.6: 0.35, 2.4: 0.25}  # and more of them where the frame shows many
 LARGE_FRAME = 200.0

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable
 
 import shapely
-from shapely.geometry import MultiPolygon, Polygon
+from shapely.geometry import LineString, MultiPolygon, Polygon
 from shapely.geometry.base import BaseGeometry
 
 GRID = 1e-3  # where an exact overlay finds no sound result, it is made on this grid, metres
@@ -49,3 +49,16 @@ def _sound(operation: Callable[..., BaseGeometry], *shapes: BaseGeometry) -> Mul
 
 def _solid(shape: BaseGeometry) -> MultiPolygon:
     return MultiPolygon(polygons(shape))
+
+
+def clipped(lines: list[LineString], area: BaseGeometry, least: float = 0.5) -> list[list[LineString]]:
+    """For each line, its pieces inside `area` that are `least` metres or longer."""
+    if not lines:
+        return []
+    shapely.prepare(area)
+    whole = shapely.contains_properly(area, lines)
+    out = []
+    for line, inside in zip(lines, whole, strict=True):
+        pieces = [line] if inside else shapely.get_parts(shapely.intersection(line, area))
+        out.append([p for p in pieces if isinstance(p, LineString) and p.length >= least])
+    return out

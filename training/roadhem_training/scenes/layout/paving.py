@@ -26,6 +26,7 @@ WHEEL_TRACKS, TRAM, GAUGE = 0.3, 0.08, 1.435
 SLAB = (3.0, 6.0)
 BLOWN = {"raised": 0.10, "lowered": 0.1, "flush": 0.4}  # share of stretches with soil or dust over the edge
 GROWN = {"raised": 0.05, "lowered": 0.0, "flush": 0.35}  # share of stretches over which grass hangs
+LOOKS = {"concrete": "stone"}  # slab joints of roads are drawn one by one, so the ground has none of its own
 BLOWN_MATERIAL = {"soil": 0.35, "sand": 0.3, "gravel": 0.2, "leaves": 0.15, "snow": 0.04, "wet": 0.08}
 
 
@@ -43,14 +44,16 @@ def pave(rng: Rng, world: World, plan: Plan, surface: MultiPolygon) -> None:
         owner = min(roads, key=_rank) if chance(rng, 0.6) else max(roads, key=_rank)
         _lay(world, surface, joined(node.corners), owner.material, owner.tone, owner.direction)
     for road in sorted(plan.roads, key=_rank):
-        _lay(world, surface, road.area, road.material, road.tone, road.direction)
+        _lay(world, surface, road.area, LOOKS.get(road.material, road.material), road.tone, road.direction)
     for node in plan.junctions:
         if node.round:
             main = max((plan.roads[leg.road] for leg in node.legs), key=_rank)
             _lay(world, surface, node.corners[0], main.material, main.tone, 0.0)
     shapely.prepare(surface)
-    for road in plan.roads:
+    for k, road in enumerate(plan.roads):
         _wear(rng, world, road, surface)
+        if road.material == "concrete":
+            world.others += _slab_joints(rng, road, plan.clear_spans(k))
 
 
 def _rank(road: Road) -> int:
@@ -77,8 +80,6 @@ def _wear(rng: Rng, world: World, road: Road, surface: MultiPolygon) -> None:
             world.ground.append(cover)
         elif surface.intersects(cover.area):
             world.ground.append(replace(cover, area=shared(surface, cover.area)))
-    if road.material == "concrete":
-        world.others += _slab_joints(rng, road)
 
 
 def _count(rng: Rng, road: Road, per_100_m: float) -> range:
@@ -163,15 +164,17 @@ def _trench(rng: Rng, road: Road) -> Polygon:
     return road.axis.strip(s, min(road.axis.length, s + rng.uniform(10, 60)), d - wide / 2, d + wide / 2)
 
 
-def _slab_joints(rng: Rng, road: Road) -> list[OtherLine]:
-    """Joints between concrete slabs, along the lanes and across them."""
-    every = between(rng, SLAB)
-    s = np.arange(0, road.axis.length, every)
-    ends = np.stack([road.axis.at(s, -road.half), road.axis.at(s, road.half)], axis=1)
-    lines = [LineString(e) for e in ends]
+def _slab_joints(rng: Rng, road: Road, spans: list[tuple[float, float]]) -> list[OtherLine]:
+    """Joints between concrete slabs, along the lanes and across them, outside junctions."""
+    every, axis = between(rng, SLAB), road.axis
     lanes = max(2, round(road.width / every))
-    for k in range(1, lanes):
-        lines.append(LineString(road.axis.parallel(0, road.axis.length, k * road.width / lanes - road.half)))
+    lines = []
+    for a, b in spans:
+        s = np.arange(a, b, every)
+        ends = np.stack([axis.at(s, np.full(len(s), d)) for d in (-road.half, road.half)], axis=1)
+        lines += [LineString(e) for e in ends]
+        for k in range(1, lanes):
+            lines.append(LineString(axis.parallel(a, b, k * road.width / lanes - road.half)))
     return [OtherLine(line, "joint") for line in lines]
 
 

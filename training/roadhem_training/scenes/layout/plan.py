@@ -79,6 +79,7 @@ class Road:
     right, left : edging of its two sides.
     parking : (right, left), whether cars may stand along the side.
     shoulders : (right, left), widths of paved shoulder outside the lanes.
+    median : width of the island all along its middle, 0 where there is none.
     beyond : what its square ends would wrongly cover on the far side of the roads they meet.
     """
 
@@ -94,6 +95,7 @@ class Road:
     parking: tuple[bool, bool] = (False, False)
     marked: bool = True
     shoulders: tuple[float, float] = (0.0, 0.0)
+    median: float = 0.0
     direction: float = 0.0
     beyond: list[Polygon] = field(default_factory=list)
 

@@ -18,7 +18,7 @@ from roadhem_training.scenes.layout.annexes import bays, dead_ends
 from roadhem_training.scenes.layout.crosswalks import crosswalks
 from roadhem_training.scenes.layout.junctions import junctions
 from roadhem_training.scenes.layout.lots import place_lots
-from roadhem_training.scenes.layout.medians import medians
+from roadhem_training.scenes.layout.medians import median_width, medians
 from roadhem_training.scenes.layout.odds import StreetOdds, between, chance, pick, pick_between
 from roadhem_training.scenes.layout.plan import Edging, Plan, Road
 from roadhem_training.scenes.layout.surface import PLAN_REACH, rough_surface
@@ -134,19 +134,31 @@ def dress(rng: Rng, axes: list[Axis], rules: StreetOdds) -> list[Road]:
 
 
 def _road(rng: Rng, line: LineString, rank: str, rules: StreetOdds, family: Family) -> Road:
-    width = round(between(rng, rules.width[rank]), 2)
-    oneway = width < 5.0 or chance(rng, 0.12)
-    lanes = max(1 if oneway else 2, int(width // 3.1) if rank == "main" else (1 if width < 4.8 else 2))
+    boulevard = rank == "main" and chance(rng, odds.BOULEVARD)
+    width = round(between(rng, odds.BOULEVARD_WIDTH if boulevard else rules.width[rank]), 2)
+    oneway = not boulevard and (width < 5.0 or chance(rng, 0.12))
+    wanted = boulevard or chance(rng, rules.median * (2.0 if rank == "main" else 0.7))
+    median = median_width(rng, width) if wanted and not oneway else 0.0
+    lanes = _lanes(width - median, oneway, rank)
     material = pick(rng, rules.surface) if chance(rng, 0.35) else family.surface
     parking = [width > 6 and chance(rng, rules.parking) for _ in range(2)]
     flush = chance(rng, rules.flush_alley if rank == "alley" else rules.flush)
     right, left = (_side(rng, rules, family, flush, material) for _ in range(2))
     return Road(
         axis=Alignment(shapely.get_coordinates(line)), width=width, lanes=lanes, rank=rank, right=right, left=left,
-        material=material, tone=float(np.clip(rng.normal(0, 0.45), -1, 1)), oneway=oneway,
+        material=material, tone=float(np.clip(rng.normal(0, 0.45), -1, 1)), oneway=oneway, median=median,
         parking=(parking[0], parking[1]), marked=width > 4.8 and chance(rng, rules.marked),
         direction=Alignment(shapely.get_coordinates(line)).heading(0.0) + pick(rng, {0.0: 0.7, 0.785: 0.3}),
     )  # fmt: skip
+
+
+def _lanes(width: float, oneway: bool, rank: str) -> int:
+    """Number of lanes on `width` metres of carriageway; even where a median or a centre line parts them."""
+    if oneway:
+        return 1 if width < 5.5 else 2
+    if width < 4.8:
+        return 1
+    return min(8, 2 * int(width // 6.4)) if rank == "main" and width > 12.8 else 2
 
 
 class Family:
@@ -202,6 +214,6 @@ def plan_town(rng: Rng, size: float, style: str) -> Plan:
     crosswalks(rng, plan)
     bays(rng, plan, rules.bays)
     dead_ends(rng, plan, window)
-    plan.islands += medians(rng, plan, rules.median)
+    plan.islands += medians(rng, plan, odds.SHORT_ISLAND)
     place_lots(rng, plan, rough_surface(plan), window, rules.lots)
     return plan

@@ -10,7 +10,7 @@ from shapely.geometry import MultiPolygon
 
 from roadhem_training.scenes.layout.alignment import Alignment
 from roadhem_training.scenes.layout.odds import between, chance
-from roadhem_training.scenes.layout.plan import Plan
+from roadhem_training.scenes.layout.plan import Plan, Road
 from roadhem_training.scenes.layout.shapes import oriented_box
 from roadhem_training.scenes.layout.stretches import OpenChain, Stretch
 from roadhem_training.scenes.world import Body
@@ -76,17 +76,18 @@ def moving(rng: np.random.Generator, plan: Plan, surface: MultiPolygon) -> list[
         for a, b in plan.clear_spans(k):
             at = a + rng.uniform(0, MOVING_EVERY[1])
             while at < b - 3:
-                out.append(_in_lane(rng, road.axis, at, *_lane(rng, road.width, road.lanes, road.oneway)))
+                out.append(_in_lane(rng, road.axis, at, *_lane(rng, road)))
                 at += between(rng, MOVING_EVERY)
     shapely.prepare(surface)
     return [v for v in out if surface.contains(v.footprint)]
 
 
-def _lane(rng: np.random.Generator, width: float, lanes: int, oneway: bool) -> tuple[float, bool]:
+def _lane(rng: np.random.Generator, road: Road) -> tuple[float, bool]:
     """Offset of a lane's middle from the axis, and whether it runs with the axis (traffic keeps right)."""
-    lane = int(rng.integers(lanes))
-    offset = (lane + 0.5) * width / lanes - 0.5 * width
-    return offset, oneway or offset < 0
+    lane = int(rng.integers(road.lanes))
+    width = (road.width - road.median) / road.lanes
+    offset = (lane + 0.5) * width - 0.5 * (road.width - road.median)
+    return offset + np.sign(offset) * 0.5 * road.median, road.oneway or offset < 0
 
 
 def _in_lane(rng: np.random.Generator, axis: Alignment, s: float, offset: float, with_axis: bool) -> Body:
