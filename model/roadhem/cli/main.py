@@ -7,7 +7,6 @@ named cannot be used, 1 when the work found faults or went on without some input
 
 from __future__ import annotations
 
-import difflib
 import errno
 import os
 import sys
@@ -68,6 +67,8 @@ class Verbs(click.Group):
     ) -> tuple[str | None, click.Command | None, list[str]]:
         """Find the verb, or name the nearest one."""
         if args and self.get_command(ctx, args[0]) is None and not args[0].startswith("-"):
+            import difflib
+
             verbs = self.list_commands(ctx)
             near = difflib.get_close_matches(args[0].lower(), verbs, 1, 0.0)
             raise click.UsageError(f"There is no verb {args[0]}, the nearest is {near[0]}", ctx)
