@@ -29,6 +29,8 @@ def bridge(sheet: Sheet, rows: Rows, ended: bool, settings: Settings) -> Rows | 
     """
     last_corner = np.flatnonzero(rows[:, FORM] == CORNER)
     solid = rows[last_corner[-1] + 1 :] if len(last_corner) else rows
+    if len(solid) == 0:
+        return None
     back_m = solid[-1, TRAVEL] - solid[:, TRAVEL]
     kept = solid[(back_m <= settings.bridge_memory_m) & (back_m >= settings.bridge_drop_m)]
     if len(kept) < 2 or kept[-1, TRAVEL] - kept[0, TRAVEL] < settings.bridge_least_m:
