@@ -118,7 +118,7 @@ def _other_edges(rows: Rows, found: NDArray[np.float64], settings: Settings) -> 
 
 
 def _corners(rows: Rows, settings: Settings) -> Iterator[tuple[float, Doubt]]:
-    for k in np.flatnonzero(rows[:, FORM] == CORNER):
+    for k in 1 + np.flatnonzero(rows[1:-1, FORM] == CORNER):
         before = between(rows[:k], 0.0, settings.corner_leg_m, rows[k, TRAVEL])
         after = between(rows[k + 1 :], 0.0, settings.corner_leg_m, rows[k, TRAVEL])
         turn = abs(turn_of(straight(before).direction, straight(after).direction))
