@@ -45,15 +45,18 @@ def main(model: Path, out: Path, scenes: int, real: Path) -> None:
     card = json.loads((model / "card.json").read_text(encoding="utf-8"))
     made = datetime.now(timezone.utc).isoformat(timespec="minutes")
     command = shlex.join(["python", "-m", "roadhem_training.bench", *sys.argv[1:]])
-    record = {"made": made, "command": command, "model": _of_card(card), "missing": missing,
-              "figures": figures, "baselines": {g: [_of_rival(r) for r in some] for g, some in rivals.items()}}  # fmt: skip
-    write_json(out / "figures.json", record)
+    baselines = {group: [_of_rival(rival) for rival in tuned] for group, tuned in rivals.items()}
+    record = {"made": made, "command": command, "model": _of_card(card), "missing": missing}
+    write_json(out / "figures.json", {**record, "figures": figures, "baselines": baselines})
     write_bench_page(
-        out / "index.html", f"What model “{card['name']}” is worth",
-        f"{len(groups.get(INVENTED, []))} invented scenes it was never trained on and {len(groups.get(REAL, []))} real "
-        f"sets; trained for {card['training'].get('steps', '?')} steps.",
-        f"Measured {made} by", command, parts_of(groups, figures, rivals, cases_of(groups), missing),
-    )  # fmt: skip
+        out / "index.html",
+        f"What model “{card['name']}” is worth",
+        f"{len(groups[INVENTED])} invented scenes it was never trained on and {len(groups.get(REAL, []))} real sets; "
+        f"trained for {card['training'].get('steps', '?')} steps.",
+        f"Measured {made} by",
+        command,
+        parts_of(groups, figures, rivals, cases_of(groups), missing),
+    )
     click.echo(f"{missing + chr(10) if missing else ''}page {out / 'index.html'}, figures {out / 'figures.json'}")
 
 
@@ -89,7 +92,8 @@ def _of_card(card: dict[str, Any]) -> dict[str, Any]:
 
 
 def _of_rival(rival: Tuned) -> dict[str, Any]:
-    return {"name": rival.name, "kept": rival.log[rival.best][0], "figures": rival.figures, "log": rival.log}
+    log = [vars(one) for one in rival.log]
+    return {"name": rival.name, "kept": rival.log[rival.best].setting, "figures": rival.figures, "log": log}
 
 
 if __name__ == "__main__":

@@ -137,7 +137,7 @@ def joined_cells(near: Nearness, thin: NDArray[np.bool_]) -> Lines:
             corners = np.roll(padded, -down, axis=0) | np.roll(padded, -right, axis=1)
             both &= ~corners
         start = np.argwhere(both) - 1
-        pairs.append(np.stack([start, start + (down, right)], axis=1))
+        pairs.append(np.stack([start, start + np.array([down, right])], axis=1))
     ends = np.concatenate(pairs)
     if not len(ends):
         return np.empty(0, dtype=object)

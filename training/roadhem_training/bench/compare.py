@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from roadhem.accuracy.matching import SEARCH_M, UNSCORED_REACH_M, LineMeasures, measure_lines
 from roadhem_training.bench.samples import Floats, Samples, along_lines, nearest, runs_of
-from roadhem_training.bench.truth import HIDDEN, Lines, Truth, joined
+from roadhem_training.bench.truth import HIDDEN, TOUCH_M, Lines, Truth, joined
 
 BUFFERS_M = (0.15, 0.30)
 RIGHT_M = BUFFERS_M[-1]
@@ -25,7 +25,6 @@ PARALLEL_RUN_M = 2.0
 
 BRIDGE_LONGEST_M = 8.0
 BRIDGE_WITHIN_M = 0.5
-_SAME_PLACE_M = 0.05
 
 
 @dataclass(frozen=True)
@@ -52,7 +51,8 @@ class Comparison:
     Attributes
     ----------
     measures : one for each of BUFFERS_M. traced : the lines that count. places : where these samples lie.
-    beside : all lines in the areas against all of the truth, hidden and unsure too. drawn : all of the truth. bridged : for each short hidden stretch, whether it was bridged.
+    beside : all lines in the areas against all of the truth, hidden and unsure too. drawn : all of the truth.
+    bridged : for each short hidden stretch, whether it was bridged.
     """
 
     measures: tuple[LineMeasures, ...]
@@ -96,7 +96,7 @@ def wrong_parallel(samples: Samples, lines: Lines) -> NDArray[np.bool_]:
 
 
 def bridged(lines: Lines, truth: Truth) -> NDArray[np.bool_]:
-    """Tell, for each hidden stretch up to BRIDGE_LONGEST_M between visible ones, whether lines lie along all of it."""
+    """Tell, for each hidden stretch up to BRIDGE_LONGEST_M between visible ones, whether lines run all along it."""
     short = [line for line in joined(truth.lines[truth.sight == HIDDEN]) if _between(line, truth)]
     samples = along_lines(np.array(short, dtype=object))
     missed = nearest(samples, lines).distance > BRIDGE_WITHIN_M
@@ -108,7 +108,7 @@ def _between(line: Any, truth: Truth) -> bool:
         return False
     visible = truth.lines[truth.scored]
     ends = shapely.points([line.coords[0], line.coords[-1]])
-    return all((shapely.distance(visible, end) <= _SAME_PLACE_M).any() for end in ends)
+    return all((shapely.distance(visible, end) <= TOUCH_M).any() for end in ends)
 
 
 def _traced(samples: Samples, truth: Truth, against: NDArray[np.bool_]) -> Sampled:
@@ -160,7 +160,7 @@ def line_figures(found: Sequence[Comparison]) -> dict[str, float]:
 
 
 def class_figures(found: Sequence[Comparison], by: str) -> dict[str, dict[str, float]]:
-    """Pool by a class of the truth, "kind" or "sight": what was found of it, and how far off what lies beside it is."""
+    """Pool by a class of the truth, "kind" or "sight": what was found of it, and how far off lines beside it are."""
     drawn, traced = pooled([one.drawn for one in found]), pooled([one.beside for one in found])
     return {
         str(name): _class(_where(drawn, getattr(drawn, by) == name), _where(traced, getattr(traced, by) == name))

@@ -18,7 +18,7 @@ ENOUGH = 0.95
 """An edge is done when this share of it is right."""
 MOST = 10
 HAND_STEP_M = 2.0
-"""A person gives an edge up after MOST clicks beyond the first, or one for each HAND_STEP_M: that is drawing by hand."""
+"""A person gives an edge up after MOST clicks beyond the first, or one each HAND_STEP_M: that is drawing by hand."""
 SHORTEST_EDGE_M = 5.0
 SEED_REACH_M = 1.0
 
@@ -41,9 +41,9 @@ def click_edges(edges: Lines, seeds: Floats, trace: TraceFrom) -> list[Clicked]:
 def click_edge(edge: Any, first: Floats, trace: TraceFrom) -> Clicked:
     """Click until ENOUGH of an edge lies within RIGHT_M of the lines, or as often as a person would.
 
-    Each click lies on the edge, in the middle of the largest gap; gaps end at earlier clicks, so that a click that gave
-    nothing is not made again. It is tried as a seed of its own and as one more point of a trace through all clicks;
-    what is right of either is kept.
+    Each click lies on the edge, in the middle of the largest gap; gaps end at earlier clicks, so that a click that
+    gave nothing is not made again. It is tried as a seed of its own and as one more point of a trace through all
+    clicks; what is right of either is kept.
     """
     samples = along_lines(np.array([edge], dtype=object))
     own = float(edge.project(shapely.Point(first)))

@@ -16,8 +16,10 @@ class Goal:
     at_most: bool = False
 
     def short_by(self, figure: float) -> float:
-        """Return by how much a figure misses the goal; 0 where it is reached, NaN where there is none."""
-        return max(0.0, figure - self.limit if self.at_most else self.limit - figure) if figure == figure else math.nan
+        """Return by how much a figure misses the goal; 0 where it is reached, NaN where there is no figure."""
+        if math.isnan(figure):
+            return math.nan
+        return max(0.0, figure - self.limit if self.at_most else self.limit - figure)
 
     def __str__(self) -> str:
         return f"{'≤' if self.at_most else '≥'} {self.limit:g}"

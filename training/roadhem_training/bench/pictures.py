@@ -14,10 +14,11 @@ from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.collections import LineCollection
 from matplotlib.figure import Figure
 
-from roadhem.delivery.backdrop import Readable, backdrop
+from roadhem.delivery.backdrop import Bounds, backdrop
 from roadhem.delivery.legend import cased
 from roadhem.delivery.palette import CASING, FAINT, INK, PAPER
 from roadhem.delivery.picture import round_length
+from roadhem.tiles.mosaic import Mosaic
 from roadhem_training.bench.cases import Case
 from roadhem_training.bench.findings import Findings
 from roadhem_training.bench.spread import Misses, held_shares
@@ -29,11 +30,9 @@ TRUE_COLOUR, UNSCORED_COLOUR, TRACED_COLOUR, SEED_COLOUR = "#3fd0ff", "#b9b4ff",
 NOMINAL = np.linspace(0.02, 0.98, 49)
 
 
-def draw_case(case: Case, one: Findings, mosaic: Readable) -> str:
+def draw_case(case: Case, one: Findings, mosaic: Mosaic) -> str:
     """Draw truth, lines and seeds over the image around a case."""
-    half = case.side / 2
-    (x, y) = case.centre
-    bounds = (x - half, y - half, x + half, y + half)
+    bounds = window(case, mosaic.bounds_m)
     image, filled = backdrop(mosaic, bounds)
     figure, axes = _figure(SIDE_INCHES)
     axes.imshow(np.clip(image[..., :3], 0, 1), extent=(filled[0], filled[2], filled[1], filled[3]))
@@ -47,6 +46,16 @@ def draw_case(case: Case, one: Findings, mosaic: Readable) -> str:
     axes.set_ylim(bounds[1], bounds[3])
     _scale_bar(axes, bounds)
     return _address(figure, "jpg", pil_kwargs=JPEG)
+
+
+def window(case: Case, tiles: Bounds) -> Bounds:
+    """Return the square to show, moved inside the tiles as far as they reach."""
+    half = case.side / 2
+    x, y = (
+        (low + high) / 2 if high - low < case.side else min(max(middle, low + half), high - half)
+        for middle, low, high in zip(case.centre, tiles[:2], tiles[2:], strict=True)
+    )
+    return (x - half, y - half, x + half, y + half)
 
 
 def draw_reliability(groups: Sequence[tuple[str, Misses]]) -> str:
@@ -81,7 +90,7 @@ def _draw(axes: Axes, lines: Lines, colour: str, width: float, dash: str) -> Non
         axes.add_collection(drawn)
 
 
-def _scale_bar(axes: Axes, bounds: tuple[float, float, float, float]) -> None:
+def _scale_bar(axes: Axes, bounds: Bounds) -> None:
     side = bounds[2] - bounds[0]
     length = round_length(side / 4)
     x, y = bounds[0] + side * 0.04, bounds[1] + side * 0.05

@@ -34,16 +34,20 @@ SET_COLUMNS = (
     "lateral median, m", "lateral 95 %, m",
 )  # fmt: skip
 MEASURED = (
-    "Lengths of all sets of a group are pooled. Completeness and correctness: parts within the buffer of the other side "
-    "(true distance). Hidden and unsure truth is neither missed nor wrong.",
-    "Lateral: distance of traced places, every 0.1 m, to the truth; those beyond 2 m count as outside of every share.",
+    "Lengths of all sets of a group are pooled. Completeness and correctness: parts within the buffer of the other "
+    "side (true distance). Hidden and unsure truth is neither missed nor wrong.",
+    "Lateral: distance of traced places, every 0.1 m, to the truth; those beyond 2 m count as outside of every "
+    "share.",
     "On a wrong parallel line: traced length 0.30–1.5 m from the nearest truth, within 15° of its heading, for 2 m "
-    "or more. Hidden stretches: up to 8 m long, between visible ones; bridged when lines pass within 0.5 m of all of it.",
-    "Corrections: clicks beyond the first until 95 % of a visible edge (from 5 m) lies within 0.30 m of its lines. Each "
-    "click is exact, in the middle of the largest gap; it serves as a seed of its own and as one more point of the trace "
-    f"through all clicks. An edge is given up after {MOST} clicks, or one for every {HAND_STEP_M:g} m if that is fewer.",
-    f"The minimal path is given exact clicks at both ends of every visible edge, in pieces of at most {PIECE_M:g} m; the "
-    "skeleton needs no click. Both see the same fields, and their settings were chosen on these very sets.",
+    "or more. Hidden stretches: up to 8 m long, between visible ones; bridged when lines pass within 0.5 m of all "
+    "of it.",
+    "Corrections: clicks beyond the first until 95 % of a visible edge (from 5 m) lies within 0.30 m of its lines. "
+    "Each click is exact, in the middle of the largest gap; it serves as a seed of its own and as one more point of "
+    f"the trace through all clicks. An edge is given up after {MOST} clicks, or one for every {HAND_STEP_M:g} m if "
+    "that is fewer.",
+    "The minimal path is given exact clicks at both ends of every edge, hidden stretches within it included, in "
+    f"pieces of at most {PIECE_M:g} m; the skeleton needs no click. Both see the same fields, and their settings "
+    "were chosen on these very sets, which favours them.",
 )
 
 
@@ -58,7 +62,8 @@ def parts_of(
 
     Parameters
     ----------
-    groups, figures, rivals : by group. cases : title to (group, cases). missing : a sentence on sets not there, or "".
+    groups, figures, rivals : by group. cases : title to (group, cases).
+    missing : a sentence on sets that are not there, or "".
     """
     notes = [missing] if missing else []
     first = Part("Figures", notes, [goal_table(g, figures[g], rivals[g]) for g in groups])
@@ -148,7 +153,8 @@ def spread_part(groups: Mapping[str, Sequence[Findings]], figures: Mapping[str, 
         "Pearson 1934); marked where it lies outside 0.63–0.73 or 0.92–0.97. On real sets the drawn truth is itself "
         "0.1–0.3 m off (95 %), which no spread of a line can hold.",
     )
-    return Part("Spread", notes, tables, [Picture(address, "Reliability: on the dotted line a spread holds what it says.")])
+    caption = "Reliability: on the dotted line a spread holds what it says."
+    return Part("Spread", notes, tables, [Picture(address, caption)])
 
 
 def _coverage_row(name: str, coverage: Mapping[str, Any]) -> list[Cell]:
@@ -162,12 +168,11 @@ def _coverage_row(name: str, coverage: Mapping[str, Any]) -> list[Cell]:
 
 def log_table(group: str, tuned: Tuned) -> Sheet:
     """Every setting that was tried."""
-    names = ("completeness at 0.30 m", "correctness at 0.30 m", "lateral median, m")
     rows = [
-        cells(f"{setting}{' ← kept' if n == tuned.best else ''}", *(figures[name] for name in names))
-        for n, (setting, figures) in enumerate(tuned.log)
+        cells(f"{one.setting}{' ← kept' if n == tuned.best else ''}", one.completeness, one.correctness)
+        for n, one in enumerate(tuned.log)
     ]
-    return Sheet(f"{group}: {tuned.name}", ("setting", *names), rows)
+    return Sheet(f"{group}: {tuned.name}", ("setting", "completeness at 0.30 m", "correctness at 0.30 m"), rows)
 
 
 def case_pictures(cases: Sequence[Case], found: Sequence[Findings]) -> list[Picture]:

@@ -59,9 +59,33 @@ def along_lines(lines: NDArray[Any], step_m: float = STEP_M) -> Samples:
     rank = np.arange(count.sum()) - np.repeat(np.cumsum(count) - count, count)
     weight = np.repeat(length / np.maximum(count, 1), count)
     along = (rank + 0.5) * weight
-    xy = _at(lines, line, along)
-    chord = _at(lines, line, along + _HALF_CHORD_M) - _at(lines, line, np.maximum(along - _HALF_CHORD_M, 0))
-    return Samples(xy, np.arctan2(chord[:, 1], chord[:, 0]), line, along, weight)
+    chain = _Chain.of(lines)
+    chord = chain.at(line, along + _HALF_CHORD_M) - chain.at(line, along - _HALF_CHORD_M)
+    return Samples(chain.at(line, along), np.arctan2(chord[:, 1], chord[:, 0]), line, along, weight)
+
+
+@dataclass(frozen=True)
+class _Chain:
+    """Vertices of all lines one after another, with the metres before each."""
+
+    xy: Floats
+    before: Floats
+    first: NDArray[np.int64]
+
+    @classmethod
+    def of(cls, lines: NDArray[Any]) -> _Chain:
+        xy, line = shapely.get_coordinates(lines, return_index=True)
+        before = np.append(0.0, np.cumsum(np.hypot(*np.diff(xy, axis=0).T)))
+        return cls(xy, before[: len(xy)], np.searchsorted(line, np.arange(len(lines) + 1)))
+
+    def at(self, line: NDArray[np.int64], along: Floats) -> Floats:
+        """Places along lines, kept between their ends."""
+        low, high = self.before[self.first[line]], self.before[self.first[line + 1] - 1]
+        way = np.clip(low + along, low, high)
+        segment = np.clip(np.searchsorted(self.before, way), self.first[line] + 1, self.first[line + 1] - 1)
+        start, length = self.before[segment - 1], self.before[segment] - self.before[segment - 1]
+        share = np.divide(way - start, length, out=np.zeros(len(way)), where=length > 0)[:, None]
+        return (1 - share) * self.xy[segment - 1] + share * self.xy[segment]
 
 
 def nearest(samples: Samples, lines: NDArray[Any]) -> Nearest:
@@ -86,6 +110,3 @@ def runs_of(mark: NDArray[np.bool_], line: NDArray[np.int64], weight: Floats, le
     length = np.bincount(run, weights=weight)
     return mark & (length[run] >= least_m - 1e-9)
 
-
-def _at(lines: NDArray[Any], line: NDArray[np.int64], along: Floats) -> Floats:
-    return shapely.get_coordinates(shapely.line_interpolate_point(lines[line], along)).reshape(-1, 2)

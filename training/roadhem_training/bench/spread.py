@@ -52,7 +52,7 @@ def _spread_at(traced: Traced, line: int, along: float) -> float:
 
 
 def clopper_pearson(hits: int, count: int, level: float = 0.95) -> tuple[float, float]:
-    """Exact bounds of a share from `hits` of `count` (Clopper & Pearson 1934), by quantiles of the beta distribution."""
+    """Exact bounds of a share from `hits` of `count` (Clopper & Pearson 1934), by quantiles of beta distributions."""
     tail = (1 - level) / 2
     low = scipy.stats.beta.ppf(tail, hits, count - hits + 1) if hits else 0.0
     high = scipy.stats.beta.ppf(1 - tail, hits + 1, count - hits) if hits < count else 1.0
@@ -83,15 +83,17 @@ def likelihood(these: Misses) -> float:
 
 
 def rank(these: Misses) -> float:
-    """Spearman's rank correlation of spread and error."""
+    """Spearman's rank correlation of spread and error; NaN where either never varies."""
+    if np.ptp(these.spread) == 0 or np.ptp(np.minimum(these.error, SEARCH_M)) == 0:
+        return float("nan")
     return float(scipy.stats.spearmanr(these.spread, np.minimum(these.error, SEARCH_M)).statistic)
 
 
 def sparsification(error: Floats, spread: Floats) -> float:
-    """Mean excess of the error left over the best possible, removing the most uncertain first (AUSE, Ilg et al. 2018).
+    """Mean excess of the error left, removing the most uncertain first, over the best possible; in the error's unit.
 
-    The mean over removing 0 .. n - 1 places of (mean error left, sorted by spread) minus (the same, sorted by error),
-    in the error's unit.
+    AUSE of Ilg et al. (2018): the mean, over removing 0 .. n - 1 places, of the mean error left when sorted by spread
+    minus that when sorted by error.
     """
     return float(np.mean(_left(error[np.argsort(spread, kind="stable")]) - _left(np.sort(error))))
 

@@ -19,6 +19,8 @@ from roadhem_training.bench.sets import OTHERS, TRUTH, BenchSet
 HIDDEN = "hidden"
 MARKING = "marking"
 AREAS = "areas"
+TOUCH_M = 0.05
+"""Ends of pieces this close are the same place."""
 
 Lines = NDArray[Any]
 
@@ -50,9 +52,14 @@ class Truth:
         shapely.prepare(self.areas)
         return shapely.contains_xy(self.areas, *xy.T)
 
-    def whole_edges(self) -> Lines:
-        """Visible pieces inside the areas, joined where they go on."""
-        return joined(clipped(self.lines[self.scored], self.areas))
+    def whole_edges(self, across_hidden: bool = False) -> Lines:
+        """Pieces inside the areas joined where they go on: the visible ones, or all of edges that show somewhere."""
+        visible = self.lines[self.scored]
+        if not across_hidden:
+            return joined(clipped(visible, self.areas))
+        edges = joined(clipped(self.lines, self.areas))
+        shown = shapely.STRtree(visible).query(edges, predicate="dwithin", distance=TOUCH_M)[0]
+        return edges[np.unique(shown)]
 
 
 def read_truth(bench_set: BenchSet, crs: pyproj.CRS, grid: WorkingGrid) -> Truth:
