@@ -74,7 +74,7 @@ def examine_all(sets: Sequence[BenchSet], model: Path, out: Path) -> list[Findin
         found.append(one)
         figures = line_figures([one.comparison])
         click.echo(
-            f"{bench_set.group:9s}{bench_set.name:14s}{bench_set.about:10s}"
+            f"{bench_set.group:9s}{bench_set.title:22s}"
             f"{figures['truth, m']:7.0f} m  completeness {figures['completeness at 0.30 m']:.3f}"
             f"  correctness {figures['correctness at 0.30 m']:.3f}"
         )
@@ -85,7 +85,7 @@ def figures_of(found: Sequence[Findings]) -> dict[str, Any]:
     """Pool the figures of sets."""
     comparisons = [one.comparison for one in found]
     return {
-        "each set": {one.bench_set.name: line_figures([one.comparison]) for one in found},
+        "each set": {one.bench_set.title: line_figures([one.comparison]) for one in found},
         "lines": line_figures(comparisons),
         "clicks": click_figures([edge for one in found for edge in one.clicked]),
         "seeds": _seed_figures(found),

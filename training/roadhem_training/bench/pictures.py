@@ -24,28 +24,36 @@ from roadhem_training.bench.findings import Findings
 from roadhem_training.bench.spread import Misses, held_shares
 from roadhem_training.bench.truth import Lines
 
-SIDE_INCHES, DPI = 4.4, 100
+SIDE_INCHES, DPI = 4.2, 100
 JPEG = {"quality": 82}
 TRUE_COLOUR, UNSCORED_COLOUR, TRACED_COLOUR, SEED_COLOUR = "#3fd0ff", "#b9b4ff", "#ff9d1c", "#ffffff"
 NOMINAL = np.linspace(0.02, 0.98, 49)
 
 
 def draw_case(case: Case, one: Findings, mosaic: Mosaic) -> str:
-    """Draw truth, lines and seeds over the image around a case."""
+    """Draw the image around a case, bare on the left, under truth, lines and seeds on the right."""
     bounds = window(case, mosaic.bounds_m)
     image, filled = backdrop(mosaic, bounds)
-    figure, axes = _figure(SIDE_INCHES)
-    axes.imshow(np.clip(image[..., :3], 0, 1), extent=(filled[0], filled[2], filled[1], filled[3]))
-    truth = one.truth
-    _draw(axes, truth.lines[~truth.scored], UNSCORED_COLOUR, 1.6, ":")
-    _draw(axes, truth.lines[truth.scored], TRUE_COLOUR, 3.2, "-")
-    _draw(axes, one.lines, TRACED_COLOUR, 1.4, "-")
-    seeds = axes.plot(*one.seeds.T, "o", ms=5, color=SEED_COLOUR, mec=CASING, mew=1.2, zorder=5)
-    seeds[0].set_clip_on(True)
-    axes.set_xlim(bounds[0], bounds[2])
-    axes.set_ylim(bounds[1], bounds[3])
+    figure = Figure(figsize=(2 * SIDE_INCHES, SIDE_INCHES), dpi=DPI)
+    FigureCanvasAgg(figure)
+    for half in range(2):
+        axes = figure.add_axes((half / 2, 0.0, 0.5, 1.0))
+        axes.set_axis_off()
+        axes.imshow(np.clip(image[..., :3], 0, 1), extent=(filled[0], filled[2], filled[1], filled[3]))
+        if half:
+            _draw_lines(axes, one)
+        axes.set_xlim(bounds[0], bounds[2])
+        axes.set_ylim(bounds[1], bounds[3])
     _scale_bar(axes, bounds)
     return _address(figure, "jpg", pil_kwargs=JPEG)
+
+
+def _draw_lines(axes: Axes, one: Findings) -> None:
+    truth = one.truth
+    _draw(axes, truth.lines[~truth.scored], UNSCORED_COLOUR, 1.6, ":")
+    _draw(axes, truth.lines[truth.scored], TRUE_COLOUR, 2.6, "-")
+    _draw(axes, one.lines, TRACED_COLOUR, 1.1, "-")
+    axes.plot(*one.seeds.T, "o", ms=5, color=SEED_COLOUR, mec=CASING, mew=1.2, zorder=5)
 
 
 def window(case: Case, tiles: Bounds) -> Bounds:
@@ -72,15 +80,6 @@ def draw_reliability(groups: Sequence[tuple[str, Misses]]) -> str:
     axes.legend(frameon=False, loc="upper left")
     axes.grid(alpha=0.25)
     return _address(figure, "png")
-
-
-def _figure(side: float) -> tuple[Figure, Axes]:
-    figure = Figure(figsize=(side, side), dpi=DPI)
-    FigureCanvasAgg(figure)
-    axes = figure.add_axes((0.0, 0.0, 1.0, 1.0))
-    axes.set_axis_off()
-    axes.set_autoscale_on(False)
-    return figure, axes
 
 
 def _draw(axes: Axes, lines: Lines, colour: str, width: float, dash: str) -> None:

@@ -182,6 +182,5 @@ def case_pictures(cases: Sequence[Case], found: Sequence[Findings]) -> list[Pict
         one = found[case.index]
         tiles = one.inputs
         address = draw_case(case, one, Mosaic.open(tiles.tiles, tiles.height, tiles.crs))
-        about = f" ({one.bench_set.about})" if one.bench_set.about else ""
-        pictures.append(Picture(address, f"{one.bench_set.name}{about}: {case.words}"))
+        pictures.append(Picture(address, f"{one.bench_set.title}: {case.words}"))
     return pictures

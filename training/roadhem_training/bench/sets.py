@@ -39,6 +39,11 @@ class BenchSet:
     folder: Path
     about: str = ""
 
+    @property
+    def title(self) -> str:
+        """Name with what it is about."""
+        return f"{self.name} ({self.about})" if self.about else self.name
+
     def inputs(self, model: Path) -> Inputs:
         """Return the set's tiles with a model, for one thread."""
         images, heights = (
