@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 import math
 from pathlib import Path
+from types import SimpleNamespace
 
 import numpy as np
 import pyproj
@@ -26,7 +27,7 @@ from roadhem_training.bench.baselines import (
     minimal_paths,
     skeleton_lines,
 )
-from roadhem_training.bench.cases import Case
+from roadhem_training.bench.cases import Case, best_cases, worst_cases
 from roadhem_training.bench.compare import class_figures, compare, line_figures
 from roadhem_training.bench.corrections import MOST, click_edge, click_figures, largest_gap
 from roadhem_training.bench.doubts import Doubted, doubt_figures
@@ -234,6 +235,18 @@ def test_goals():
     assert Goal(0.02, at_most=True).short_by(0.05) == pytest.approx(0.03)
     assert math.isnan(Goal(0.5).short_by(math.nan))
     assert Goal(0.5).short_by(-math.inf) == math.inf
+
+
+def test_cases_are_the_worst_and_best_places():
+    """Should show the longest missed and wrong stretches, longest first, and the edges that are right throughout."""
+    drawn = truth(lines([(0, 0), (100, 0)], [(0, 200), (50, 200)], [(0, 400), (30, 400)]))
+    found = lines([(0, 0.1), (70, 0.1)], [(0, 200.2), (50, 200.2)], [(0, 400.1), (30, 400.1)], [(300, 0), (312, 0)])
+    one = SimpleNamespace(truth=drawn, lines=found, comparison=compare(found, drawn))
+    worst, best = worst_cases([one]), best_cases([one])
+    assert [case.words for case in worst] == ["30 m missed", "12 m wrong"]
+    assert worst[0].centre == pytest.approx((85, 0), abs=0.3)
+    assert [case.words.split(",")[0] for case in best] == ["30 m right", "50 m right"]
+    assert all(24 <= case.side <= 60 for case in worst + best)
 
 
 def test_windows_stay_inside_the_tiles():
