@@ -8,7 +8,7 @@ import shapely
 from shapely.geometry import LineString, Point, Polygon, box
 
 from roadhem.errors import BadInput
-from roadhem_training.scenes.layout import STYLE_ODDS, make_world
+from roadhem_training.scenes.layout import STYLE_ODDS, TOWNS, make_world
 from roadhem_training.scenes.layout.alignment import Alignment, from_curvature, rounded
 from roadhem_training.scenes.layout.junctions import closing
 from roadhem_training.scenes.layout.odds import CORNER_RADIUS_ODDS
@@ -17,7 +17,6 @@ from roadhem_training.scenes.layout.streets import plan_town
 from roadhem_training.scenes.world import MARGIN, World
 
 STYLES = list(STYLE_ODDS)
-TOWNS = ("old_town", "suburb", "industry")
 SIDE_STEP = 0.05  # metres to either side of an edge at which the surface is asked
 CHORD_ERROR = 0.005  # metres
 PUBLISHED_RADII = (1.5, 3.0, 4.5, 7.5, 10.7, 15.0)  # spread of handbook curb returns: yardsticks.md §3 [read]
@@ -124,6 +123,16 @@ def test_no_house_on_the_road(style: str):
                 assert body.footprint.intersection(world.surface).area < 0.01
 
 
+@pytest.mark.parametrize("style", TOWNS)
+def test_towns_have_edges_enough(style: str):
+    """Should show at least eight stretches of edge, 2 m or longer, in every town frame of 102.4 m."""
+    for seed in range(4):
+        world = _world(seed, 102.4, style)
+        frame = box(0, 0, world.size, world.size)
+        pieces = shapely.intersection([e.line for e in world.edges], frame)
+        assert np.sum(shapely.length(pieces) > 2.0) >= 8
+
+
 def test_no_edges_without_a_road():
     """Should offer lines that mislead and no edge in a place without roads."""
     worlds = [_world(seed, 60.0, "no_road") for seed in (3, 4)]
@@ -150,7 +159,13 @@ def test_curb_returns_are_arcs(radius: float, angle: int):
 def test_radii_of_junctions_within_the_published_spread():
     """Should draw corner radii of 0–15 m as handbooks have them, sharp ones among them, and few slip lanes beyond."""
     rng = np.random.default_rng(0)
-    radii = [r for style in TOWNS for _ in range(6) for n in plan_town(rng, 150.0, style).junctions for r in n.radii]
+    radii = [
+        r
+        for style in TOWNS
+        for _ in range(6)
+        for n in plan_town(rng, 150.0, style).junctions
+        for r in n.radii
+    ]
     radii = np.array(radii)
     assert max(high for _, high in CORNER_RADIUS_ODDS) == PUBLISHED_RADII[-1]
     assert 0.05 < np.mean(radii < 0.05) < 0.3

@@ -99,9 +99,7 @@ class Alignment:
         out[:, 1] += d * mean[:, 0]
         return out
 
-    def strip(
-        self, s0: float, s1: float, right: Offset, left: Offset, step: float | None = None
-    ) -> Polygon:
+    def strip(self, s0: float, s1: float, right: Offset, left: Offset, step: float | None = None) -> Polygon:
         """Area between two offsets (`right` < `left`, positive to the left) from station s0 to s1."""
         a = self.parallel(s0, s1, right, step)
         b = self.parallel(s0, s1, left, step)
@@ -109,7 +107,9 @@ class Alignment:
 
     def cells(self, s0: Points, s1: Points, right: Points, left: Points) -> MultiPolygon:
         """Small four-cornered areas, one for each entry of the four arrays; right for short ones only."""
-        ring = np.stack([self.at(s0, right), self.at(s1, right), self.at(s1, left), self.at(s0, left)], axis=1)
+        ring = np.stack(
+            [self.at(s0, right), self.at(s1, right), self.at(s1, left), self.at(s0, left)], axis=1
+        )
         return MultiPolygon(list(shapely.polygons(ring)))
 
     def part(self, s0: float, s1: float) -> Alignment:

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from shapely.geometry import Polygon
 
 from roadhem_training.scenes.layout import odds
-from roadhem_training.scenes.layout.alignment import Offset, quad_segments
+from roadhem_training.scenes.layout.alignment import quad_segments
 from roadhem_training.scenes.layout.junctions import closing
 from roadhem_training.scenes.layout.odds import Span, between, chance, pick
 from roadhem_training.scenes.layout.overlay import joined, polygons, shared
@@ -109,8 +109,10 @@ def _turn(rng: Rng, plan: Plan, k: int, side: int, a: float, b: float) -> None:
         return side * (road.half + wide * _smooth(along / taper))
 
     near = side * (road.half - OVERLAP)
-    area = road.axis.strip(s0, s1, *((far, near) if side < 0 else (near, far)), step=0.4)
-    plan.parts.append(Part(area, road.left if side > 0 else road.right, road.material, road.tone, "turn_lane"))
+    area = road.beside(side, s0, s1, near, far, step=0.4)
+    plan.parts.append(
+        Part(area, road.left if side > 0 else road.right, road.material, road.tone, "turn_lane")
+    )
     others = [r.area for j, r in enumerate(plan.roads) if j != k]
     end = shapely.Point(road.axis.at(s1 if side < 0 else s0, side * (road.half + wide))).buffer(12)
     near_by = shared(joined([area, road.area, *others]), end)
@@ -132,9 +134,7 @@ def _widening(road: Road, side: int, s0: float, s1: float, depth: float, taper: 
         ramp = np.minimum(s - s0, s1 - s) / taper if taper > 0.05 else np.ones_like(s)
         return side * (road.half + depth * np.clip(ramp, 0.0, 1.0))
 
-    near: Offset = side * (road.half - OVERLAP)
-    area = road.axis.strip(s0, s1, *((far, near) if side < 0 else (near, far)), step=0.5)
-    return area
+    return road.beside(side, s0, s1, side * (road.half - OVERLAP), far, step=0.5)
 
 
 def _build_out(rng: Rng, plan: Plan, k: int, side: int, a: float, b: float) -> None:
@@ -150,8 +150,7 @@ def _build_out(rng: Rng, plan: Plan, k: int, side: int, a: float, b: float) -> N
     def far(s: NDArray[np.float64]) -> NDArray[np.float64]:
         return side * (road.half - deep * np.clip(np.minimum(s - s0, s1 - s) / taper, 0.02, 1.0))
 
-    near = side * (road.half + 0.2)
-    area = road.axis.strip(s0, s1, *((near, far) if side < 0 else (far, near)), step=0.3)
+    area = road.beside(side, s0, s1, far, side * (road.half + 0.2), step=0.3)
     edging = road.left if side > 0 else road.right
     fill = pick(rng, odds.ISLAND_FILL) if chance(rng, 0.4) else edging.footway_material
     plan.islands.append(Island(area, replace(edging, verge=0.0, footway=0.0), fill, "build_out"))
@@ -168,7 +167,8 @@ def dead_ends(rng: Rng, plan: Plan, window: Polygon) -> None:
 
 
 def _head(rng: Rng, plan: Plan, road: Road, s: float, sign: int) -> None:
-    tail = road.axis.strip(*sorted((s, max(0.0, min(road.axis.length, s - sign * 30.0)))), -road.half, road.half)
+    a, b = sorted((s, max(0.0, min(road.axis.length, s - sign * 30.0))))
+    tail = road.axis.strip(a, b, -road.half, road.half)
     x, y = road.axis.at(s)
     if chance(rng, 0.7):
         radius = max(road.half + 1.0, between(rng, BULB_RADIUS))
@@ -181,8 +181,8 @@ def _head(rng: Rng, plan: Plan, road: Road, s: float, sign: int) -> None:
             plan.islands.append(Island(middle, road.left.bare(), pick(rng, odds.ISLAND_FILL), "round"))
     else:
         length, wide = (between(rng, span) for span in HAMMER)
-        back = s - sign * wide
-        head = road.axis.strip(*sorted((max(0.0, back), s)), -0.5 * length, 0.5 * length)
+        a, b = sorted((max(0.0, s - sign * wide), s))
+        head = road.axis.strip(a, b, -0.5 * length, 0.5 * length)
     pieces = [head, *closing(joined([head, tail]), rng.uniform(2, 9))]
     for piece in polygons(joined(pieces)):
         plan.parts.append(Part(piece, road.left, road.material, road.tone, "head"))

@@ -53,7 +53,9 @@ def make_world(seed: int, size: float, style: str | None = None) -> World:
     BadInput : a size or style that cannot be made.
     """
     if not SMALLEST <= size <= LARGEST:
-        raise BadInput(f"A world of {size:g} m cannot be made: choose a size from {SMALLEST:g} to {LARGEST:g} m.")
+        raise BadInput(
+            f"A world of {size:g} m cannot be made: choose a size from {SMALLEST:g} to {LARGEST:g} m."
+        )
     if style is not None and style not in STYLE_ODDS:
         raise BadInput(f"There is no style {style!r}: choose one of {', '.join(STYLE_ODDS)}.")
     rng = np.random.default_rng(seed)

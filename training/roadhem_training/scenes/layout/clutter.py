@@ -39,7 +39,9 @@ def along(rng: np.random.Generator, stretch: Stretch) -> tuple[list[Body], list[
             out.append(Body(oriented_box(x, y, 0.6, 0.6, heading), 1.1, "bin", 0.0, rng.random()))
     if stretch.edging.footway > 1.8 and stretch.line.length > 20 and chance(rng, SHELTER):
         x, y, heading = _behind(chain, 0.5 * chain.length, stretch.edging.stone + stretch.edging.verge + 1.4)
-        out.append(Body(oriented_box(x, y, rng.uniform(3, 5), 1.5, heading), 2.4, "shelter", 2.2, rng.random()))
+        out.append(
+            Body(oriented_box(x, y, rng.uniform(3, 5), 1.5, heading), 2.4, "shelter", 2.2, rng.random())
+        )
     barrier = pick(rng, BARRIERS)
     if barrier == "none":
         return out, []
@@ -56,7 +58,9 @@ def _barrier(
     area = line.buffer(0.5 * THICKNESS[what], cap_style="flat", join_style="mitre")
     bodies = [Body(p, rng.uniform(*TOP[what]), what, 0.0, rng.random()) for p in polygons(area)]
     name = "hedge" if what == "hedge" else "wall"
-    return bodies, [OtherLine(g, name) for g in shapely.get_parts(line) if isinstance(g, LineString) and bodies]
+    return bodies, [
+        OtherLine(g, name) for g in shapely.get_parts(line) if isinstance(g, LineString) and bodies
+    ]
 
 
 def _behind(chain: OpenChain, s: float, back: float) -> tuple[float, float, float]:
@@ -65,7 +69,13 @@ def _behind(chain: OpenChain, s: float, back: float) -> tuple[float, float, floa
 
 
 def _row(
-    rng: np.random.Generator, chain: OpenChain, back: float, every: float, what: str, radius: float, top: float
+    rng: np.random.Generator,
+    chain: OpenChain,
+    back: float,
+    every: float,
+    what: str,
+    radius: float,
+    top: float,
 ) -> list[Body]:
     out = []
     for s in np.arange(rng.uniform(0, every), chain.length, every):

@@ -79,7 +79,9 @@ def plan_country(rng: Rng, size: float, style: str) -> Plan:
 
 def _inside(axis: Alignment, window: shapely.Polygon) -> list[Alignment]:
     pieces = shapely.get_parts(axis.line.intersection(window))
-    return [Alignment(shapely.get_coordinates(p)) for p in pieces if isinstance(p, LineString) and p.length > 15]
+    return [
+        Alignment(shapely.get_coordinates(p)) for p in pieces if isinstance(p, LineString) and p.length > 15
+    ]
 
 
 def _road(rng: Rng, axis: Alignment, rank: str) -> Road:
@@ -141,9 +143,13 @@ def _tracks(rng: Rng, plan: Plan) -> None:
             x, y = road.axis.at(s)
             heading = road.axis.heading(s) + side * math.radians(rng.uniform(55, 125))
             radius = rng.uniform(30, 200) * (1 if chance(rng, 0.5) else -1)
-            axis = from_curvature(float(x), float(y), heading, [10.0, rng.uniform(20, 120)], [0, 0, 1 / radius])
+            axis = from_curvature(
+                float(x), float(y), heading, [10.0, rng.uniform(20, 120)], [0, 0, 1 / radius]
+            )
             half = rng.uniform(1.1, 2.0)
             material = pick(rng, {"gravel": 0.45, "soil": 0.35, "sand": 0.1, "dry_grass": 0.1})
             area = axis.strip(0, axis.length, -half, half)
-            mouth = shapely.union(area, axis.strip(0, road.half + 6, -half - 2, half + 2).buffer(-1).buffer(1))
+            mouth = shapely.union(
+                area, axis.strip(0, road.half + 6, -half - 2, half + 2).buffer(-1).buffer(1)
+            )
             plan.under.append(Cover(mouth, material, float(rng.normal(0, 0.3)), rng.uniform(0.1, 0.6)))

@@ -101,7 +101,8 @@ def _square_off(roads: list[Road], legs: list[Leg], x: float, y: float) -> None:
 
 def _arm(road: Road, leg: Leg, reach: float) -> Polygon:
     end = min(max(leg.station + leg.sign * reach, 0.0), road.axis.length)
-    return road.axis.strip(*sorted((leg.station, end)), -road.half, road.half)
+    s0, s1 = sorted((leg.station, end))
+    return road.axis.strip(s0, s1, -road.half, road.half)
 
 
 def _crossing(

@@ -33,7 +33,16 @@ PATHS = {
     "perimeter": 0.1, "detached": 0.35, "halls": 0.1, "park": 0.7, "field": 0.2, "wood": 0.4, "square": 0.1,
     "waste": 0.2,
 }  # fmt: skip
-PATCHES = {"perimeter": 2, "detached": 3, "halls": 3, "park": 2, "field": 1, "wood": 1, "square": 2, "waste": 4}
+PATCHES = {
+    "perimeter": 2,
+    "detached": 3,
+    "halls": 3,
+    "park": 2,
+    "field": 1,
+    "wood": 1,
+    "square": 2,
+    "waste": 4,
+}
 PATCH = {"soil": 0.25, "gravel": 0.15, "planting": 0.25, "dry_grass": 0.15, "slabs": 0.1, "sand": 0.1}
 CARS_OFF_ROAD = {
     "perimeter": 0.3, "detached": 0.35, "halls": 0.6, "park": 0.02, "field": 0.01, "wood": 0.01, "square": 0.2,
@@ -42,7 +51,9 @@ CARS_OFF_ROAD = {
 PARCEL = (8.0, 40.0)
 
 
-def fill(rng: Rng, world: World, plan: Plan, season: trees.Season, face: Polygon, front: list[Stretch]) -> None:
+def fill(
+    rng: Rng, world: World, plan: Plan, season: trees.Season, face: Polygon, front: list[Stretch]
+) -> None:
     """Ground, footways, houses and trees of one piece of land; `front` are the stretches of edge round it."""
     middle = face.representative_point()
     for island in plan.islands:
@@ -74,7 +85,9 @@ def _island(
     rng: Rng, world: World, season: trees.Season, face: Polygon, material: str, front: list[Stretch]
 ) -> None:
     relief = front[0].edging.height if front else 0.12
-    world.ground.append(Cover(face, material, float(rng.normal(0, 0.3)), 0.0, relief, rng.uniform(0, math.pi)))
+    world.ground.append(
+        Cover(face, material, float(rng.normal(0, 0.3)), 0.0, relief, rng.uniform(0, math.pi))
+    )
     world.ground += bands.walks(front, face)
     inner = face.buffer(-0.4)
     if not inner.is_empty and material in ("grass", "mown", "planting") and chance(rng, 0.6):
@@ -101,7 +114,9 @@ def _ground(rng: Rng, world: World, use: str, garden: BaseGeometry, relief: floa
             area = shared(line.buffer(half, cap_style="flat"), garden)
             world.ground.append(Cover(area, material, float(rng.normal(0, 0.3)), 0.0, relief))
             sides = shapely.get_parts([line.offset_curve(d).intersection(garden) for d in (-half, half)])
-            world.others += [OtherLine(g, "footway") for g in sides if isinstance(g, LineString) and g.length > 2]
+            world.others += [
+                OtherLine(g, "footway") for g in sides if isinstance(g, LineString) and g.length > 2
+            ]
 
 
 def _path(rng: Rng, garden: BaseGeometry) -> LineString:
@@ -124,7 +139,9 @@ def _parcels(rng: Rng, world: World, plot: BaseGeometry, heading: float, relief:
     at = -reach
     while at < reach:
         end = at + rng.uniform(*PARCEL)
-        corners = [[x, y] + a * u + b * v for a, b in ((-reach, at), (reach, at), (reach, end), (-reach, end))]
+        corners = [
+            [x, y] + a * u + b * v for a, b in ((-reach, at), (reach, at), (reach, end), (-reach, end))
+        ]
         area = shared(Polygon(corners), plot)
         if chance(rng, 0.6) and not area.is_empty:
             crop = pick(rng, {"field": 0.5, "grass": 0.2, "dry_grass": 0.15, "soil": 0.15})
@@ -134,7 +151,9 @@ def _parcels(rng: Rng, world: World, plot: BaseGeometry, heading: float, relief:
 
 def _blob(rng: Rng, x: float, y: float, radius: float) -> Polygon:
     angles = np.linspace(0, 2 * math.pi, 24, endpoint=False)
-    r = radius * (1 + sum(rng.normal(0, 0.18) * np.cos(k * angles + rng.uniform(0, 6.3)) for k in (1, 2, 3, 4)))
+    r = radius * (
+        1 + sum(rng.normal(0, 0.18) * np.cos(k * angles + rng.uniform(0, 6.3)) for k in (1, 2, 3, 4))
+    )
     r = np.maximum(r, 0.2 * radius)
     stretch = rng.uniform(0.5, 1.0)
     return Polygon(np.stack([x + r * np.cos(angles), y + stretch * r * np.sin(angles)], axis=1)).buffer(0)
@@ -144,7 +163,7 @@ def _cars(rng: Rng, garden: BaseGeometry, number: int) -> list[Body]:
     if garden.is_empty:
         return []
     x0, y0, x1, y1 = garden.bounds
-    out = []
+    out: list[Body] = []
     for _ in range(3 * number):
         x, y = rng.uniform((x0, y0), (x1, y1))
         car = vehicle(rng, x, y, rng.uniform(0, 2 * math.pi), chance(rng, 0.15))

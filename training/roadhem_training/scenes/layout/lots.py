@@ -1,4 +1,4 @@
-"""Areas to drive on inside blocks: car parks with their stalls and islands, yards and courts."""
+"""Areas to drive on inside blocks: car parks, yards and courts, each with a mouth to a road."""
 
 from __future__ import annotations
 
@@ -6,7 +6,7 @@ import math
 
 import numpy as np
 import shapely
-from shapely.geometry import MultiPolygon, Point, Polygon, box
+from shapely.geometry import Point, Polygon, box
 from shapely.geometry.base import BaseGeometry
 
 from roadhem_training.scenes.layout import odds
@@ -14,22 +14,17 @@ from roadhem_training.scenes.layout.alignment import Alignment
 from roadhem_training.scenes.layout.junctions import closing
 from roadhem_training.scenes.layout.odds import between, chance, pick
 from roadhem_training.scenes.layout.overlay import joined, less, polygons, shared
-from roadhem_training.scenes.layout.plan import Edging, Island, Part, Plan
+from roadhem_training.scenes.layout.plan import Edging, Part, Plan
 from roadhem_training.scenes.layout.shapes import oriented_box
-from roadhem_training.scenes.layout.traffic import vehicle
-from roadhem_training.scenes.world import MARGIN, Paint
+from roadhem_training.scenes.layout.stalls import stalls
+from roadhem_training.scenes.world import MARGIN
 
 Rng = np.random.Generator
 
-STALL_WIDTH, STALL_LENGTH = (2.3, 2.75), (4.7, 5.5)
-AISLE = (5.5, 7.2)
 MOUTH = (3.5, 8.0)
 LONGEST_ACCESS = 40.0
 MOUTH_RADIUS = {(0.0, 0.0): 0.1, (0.5, 2.0): 0.35, (2.0, 6.0): 0.55}
 LOT_MATERIAL = {"asphalt": 0.68, "concrete": 0.12, "pavers": 0.12, "setts": 0.04, "gravel": 0.04}
-FULL = (0.1, 0.95)
-LINE = (0.08, 0.12)
-END_ISLANDS, SPINE_ISLANDS = 0.55, 0.35
 
 
 def lot_edging(rng: Rng) -> Edging:
@@ -76,7 +71,7 @@ def _place(rng: Rng, plan: Plan, surface: BaseGeometry, face: Polygon, room: Pol
         plan.parts.append(Part(piece, edging, material, tone, "lot"))
     if min(length, width) > 14 and chance(rng, 0.85):
         centre = area.centroid
-        stalls(rng, plan, (centre.x, centre.y), heading, length, width, edging, whole)
+        stalls(rng, plan, (centre.x, centre.y), heading, (length, width), edging, whole)
 
 
 def _long_side(area: Polygon) -> float:
@@ -130,81 +125,3 @@ def _mouth(
         disc = Point(start + reach * across).buffer(width / 2 + 2 * radius + 1)
         out += [p for p in closing(ground, radius) if disc.contains(p)]
     return out
-
-
-def stalls(
-    rng: Rng, plan: Plan, centre: tuple[float, float], heading: float, length: float, width: float,
-    edging: Edging, area: BaseGeometry,
-) -> None:  # fmt: skip
-    """Rows of stalls along `heading` with aisles between; islands at row ends, lines, parked cars."""
-    deep, aisle, wide = between(rng, STALL_LENGTH), between(rng, AISLE), between(rng, STALL_WIDTH)
-    rows = _rows(width, deep, aisle)
-    frame = _Frame(centre, heading)
-    fill, line = between(rng, FULL), between(rng, LINE)
-    ended, spined = chance(rng, END_ISLANDS), chance(rng, SPINE_ISLANDS)
-    bare, ground = edging.bare(), pick(rng, odds.ISLAND_FILL)
-    wear, marked = float(rng.beta(1.5, 3)), chance(rng, 0.9)
-    lines: list[Polygon] = []
-    for low, double in rows:
-        turn = aisle if len(rows) > 1 else 1.0
-        reach = length - 2 * turn
-        high = low + deep * (2 if double else 1)
-        end = rng.uniform(1.4, 2.6) if ended and double else 0.0
-        n = int((reach - 2 * end) / wide)
-        if n < 2:
-            continue
-        x0 = -0.5 * n * wide
-        if end:
-            for x in (x0 - end, x0 + n * wide):
-                plan.islands.append(_end_island(rng, frame, x, low, high, end, bare, ground))
-        if spined and double and chance(rng, 0.7):
-            spine = frame.box(x0 + 0.3, x0 + n * wide - 0.3, low + deep - 0.6, low + deep + 0.6)
-            plan.islands.append(Island(spine, bare, ground, "island"))
-        for row in range(2 if double else 1):
-            base = low + row * deep
-            for k in range(n + 1):
-                lines.append(frame.box(x0 + k * wide - line / 2, x0 + k * wide + line / 2, base, base + deep))
-            for k in np.flatnonzero(rng.random(n) < fill):
-                x, y = frame.at(x0 + (k + 0.5) * wide + rng.normal(0, 0.1), base + 0.5 * deep + rng.normal(0, 0.2))
-                plan.bodies.append(vehicle(rng, x, y, heading + math.pi / 2 * (1 if chance(rng, 0.5) else -1)))
-    shapely.prepare(area)
-    lines = [g for g in lines if area.contains(g)]
-    if marked and lines:
-        plan.paints.append(Paint(MultiPolygon(lines), "white", wear))
-
-
-def _rows(width: float, deep: float, aisle: float) -> list[tuple[float, bool]]:
-    """(lower edge, double?) of the stall rows across a lot of `width` metres, in metres from its middle."""
-    out = [(-0.5 * width, False)]
-    at = -0.5 * width + deep + aisle
-    while at + 3 * deep + aisle <= 0.5 * width + 0.01:
-        out.append((at, True))
-        at += 2 * deep + aisle
-    if at + deep <= 0.5 * width + 0.01:
-        out.append((0.5 * width - deep, False))
-    return out
-
-
-def _end_island(
-    rng: Rng, frame: _Frame, x: float, low: float, high: float, end: float, edging: Edging, fill: str
-) -> Island:
-    nose = rng.uniform(0.3, 0.48) * (end - 0.1)
-    area = frame.box(x + 0.05, x + end - 0.05, low + 0.3, high - 0.3)
-    area = area.buffer(-nose, join_style="mitre").buffer(nose, quad_segs=16)
-    return Island(area, edging, fill, "island")
-
-
-class _Frame:
-    """Local axes of a lot."""
-
-    def __init__(self, centre: tuple[float, float], heading: float):
-        self.centre = np.array(centre)
-        self.u = np.array([math.cos(heading), math.sin(heading)])
-        self.v = np.array([-self.u[1], self.u[0]])
-
-    def at(self, x: float, y: float) -> tuple[float, float]:
-        p = self.centre + x * self.u + y * self.v
-        return float(p[0]), float(p[1])
-
-    def box(self, x0: float, x1: float, y0: float, y1: float) -> Polygon:
-        return Polygon([self.at(x0, y0), self.at(x1, y0), self.at(x1, y1), self.at(x0, y1)])

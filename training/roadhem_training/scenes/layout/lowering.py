@@ -47,7 +47,9 @@ def change(
     elif stretch.edging.kind == "flush" and stretch.line.length > 8 and not fast:
         beside = _driveways(rng, chain, stretch.edging, places, plan.driveway_every)
     material, tone = pick(rng, DRIVE_MATERIAL), float(rng.normal(0, 0.3))
-    covers = [c for a, b, _ in drives + beside for c in _paving(rng, chain, a, b, stretch.edging, material, tone)]
+    covers = [
+        c for a, b, _ in drives + beside for c in _paving(rng, chain, a, b, stretch.edging, material, tone)
+    ]
     return cut(stretch, sorted(places + drives, key=lambda p: p[0])), covers
 
 
@@ -96,7 +98,9 @@ def _paving(
     p, q = chain.points(np.array([a, b]))
     throat = max(flare, 0.3)
     inner = [q - flare * d + throat * out, p + flare * d + throat * out]
-    area: Polygon | MultiPolygon = Polygon([p, q, inner[0], inner[0] + depth * out, inner[1] + depth * out, inner[1]])
+    area: Polygon | MultiPolygon = Polygon(
+        [p, q, inner[0], inner[0] + depth * out, inner[1] + depth * out, inner[1]]
+    )
     area = area.buffer(0)
     if edging.footway and not chance(rng, THROUGH):
         near = edging.stone + edging.verge

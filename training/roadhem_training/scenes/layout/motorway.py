@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from dataclasses import replace
 
 import numpy as np
@@ -11,7 +12,7 @@ from numpy.typing import NDArray
 from shapely.geometry import LineString, Polygon, box
 
 from roadhem_training.scenes.layout import odds
-from roadhem_training.scenes.layout.alignment import Alignment, Offset, from_curvature
+from roadhem_training.scenes.layout.alignment import Alignment, from_curvature
 from roadhem_training.scenes.layout.country import _curb, _inside, through
 from roadhem_training.scenes.layout.junctions import junctions
 from roadhem_training.scenes.layout.markings import hatching
@@ -23,6 +24,7 @@ from roadhem_training.scenes.layout.surface import PLAN_REACH
 from roadhem_training.scenes.world import Body
 
 Rng = np.random.Generator
+Profile = Callable[[NDArray[np.float64]], NDArray[np.float64]]
 
 LANES = {2: 0.55, 3: 0.35, 4: 0.1}
 LANE = (3.4, 3.75)
@@ -104,7 +106,8 @@ def _ramp(rng: Rng, plan: Plan, road: Road, window: Polygon) -> None:
         return
     xy = road.axis.parallel(s0, s1, offset, step=1.0)[::sign]
     d = xy[-1] - xy[-2]
-    away = from_curvature(*map(float, xy[-1]), math.atan2(d[1], d[0]), [rng.uniform(20, 80), 30.0, 400.0],
+    x, y = map(float, xy[-1])
+    away = from_curvature(x, y, math.atan2(d[1], d[0]), [rng.uniform(20, 80), 30.0, 400.0],
                           [-sign / radius, -sign / radius, 0.0, rng.normal(0, 0.002)])  # fmt: skip
     line = LineString(np.concatenate([xy, away.xy[1:]])[::sign]).simplify(0.002)
     ramp = Road(axis=Alignment(shapely.get_coordinates(line)), width=width, lanes=1, rank="ramp", right=road.right,
@@ -115,7 +118,7 @@ def _ramp(rng: Rng, plan: Plan, road: Road, window: Polygon) -> None:
 
 
 def _gore(
-    rng: Rng, plan: Plan, road: Road, edging: Edging, ramp_edge: Offset, gore: float, radius: float
+    rng: Rng, plan: Plan, road: Road, edging: Edging, ramp_edge: Profile, gore: float, radius: float
 ) -> None:
     """The paved and hatched wedge between carriageway and ramp, up to its blunt nose."""
     nose = gore + math.copysign(math.sqrt(2 * abs(radius) * between(rng, NOSE)), radius)
@@ -150,7 +153,9 @@ def _road_beside(rng: Rng, plan: Plan, axis: Alignment, border: float, window: P
         while at < part.length - 10:
             x, y = part.at(at)
             heading = part.heading(at) + side * math.radians(rng.uniform(60, 120))
-            turn = from_curvature(float(x), float(y), heading, [20.0, 200.0], [0.0, 0.0, rng.normal(0, 0.004)])
+            turn = from_curvature(
+                float(x), float(y), heading, [20.0, 200.0], [0.0, 0.0, rng.normal(0, 0.004)]
+            )
             for leg in _inside(turn, window)[:1]:
                 plan.roads.append(replace(road, axis=leg, width=rng.uniform(4.5, 8), rank="alley"))
             at += rng.uniform(35, 110)

@@ -22,6 +22,8 @@ STYLE_ODDS = {
     "no_road": 0.05,
 }  # fmt: skip
 
+TOWNS = ("old_town", "suburb", "industry")  # styles with edges enough in any frame of 100 m
+
 CORNER_RADIUS_ODDS: Mapping[Span, float] = {
     (0.0, 0.0): 0.13, (0.3, 1.5): 0.15, (1.5, 4.5): 0.33, (4.5, 8.0): 0.24, (8.0, 11.0): 0.10, (11.0, 15.0): 0.05,
 }  # fmt: skip
@@ -29,7 +31,9 @@ CURB_HEIGHT: Span = (0.06, 0.20)
 LOWERED_HEIGHT: Span = (0.0, 0.04)
 GUTTER: Span = (0.3, 0.6)
 CURB_STONE: Span = (0.08, 0.30)
-STONE_BEHIND_GUTTER = 0.94  # share of gutters that end at a curb stone one can see: a bare strip is rarely a gutter
+STONE_BEHIND_GUTTER = (
+    0.94  # share of gutters that end at a curb stone one can see: a bare strip is rarely a gutter
+)
 DRIVEWAY: Span = (3.0, 7.0)
 RAMP: Span = (1.2, 5.0)
 ISLAND_FILL = {
@@ -41,7 +45,14 @@ THIN_STRIP = 0.12  # share of sides with a strip 0.3–0.9 m wide behind the cur
 GUTTER_ODDS = {"stone": 0.5, "asphalt": 0.25, "setts": 0.25}
 STONE_ODDS = {"curb": 0.4, "stone": 0.4, "asphalt": 0.2}
 STONE_TONE_ODDS: Mapping[Span, float] = {(0.2, 0.8): 0.45, (-0.15, 0.2): 0.4, (-0.7, -0.15): 0.15}
-FOOTWAY_ODDS = {"pavers": 0.28, "slabs": 0.25, "asphalt": 0.2, "concrete": 0.18, "setts": 0.04, "gravel": 0.05}
+FOOTWAY_ODDS = {
+    "pavers": 0.28,
+    "slabs": 0.25,
+    "asphalt": 0.2,
+    "concrete": 0.18,
+    "setts": 0.04,
+    "gravel": 0.05,
+}
 VERGE_ODDS = {"grass": 0.4, "mown": 0.2, "dry_grass": 0.08, "planting": 0.1, "soil": 0.12, "setts": 0.10}
 
 
@@ -126,8 +137,16 @@ LAND = {
     "car_park": {"halls": 0.25, "park": 0.45, "square": 0.15, "waste": 0.1, "wood": 0.05},
     "country": {"field": 0.52, "wood": 0.16, "park": 0.12, "detached": 0.12, "waste": 0.08},
     "motorway": {"park": 0.35, "wood": 0.2, "field": 0.3, "halls": 0.08, "waste": 0.07},
-    "no_road": {"park": 0.22, "detached": 0.14, "perimeter": 0.14, "field": 0.16, "wood": 0.1, "halls": 0.08,
-                "square": 0.1, "waste": 0.06},
+    "no_road": {
+        "park": 0.22,
+        "detached": 0.14,
+        "perimeter": 0.14,
+        "field": 0.16,
+        "wood": 0.1,
+        "halls": 0.08,
+        "square": 0.1,
+        "waste": 0.06,
+    },
 }
 
 

@@ -19,7 +19,13 @@ from roadhem_training.scenes.world import Cover, OtherLine, World
 Rng = np.random.Generator
 
 RANKS = {"track": 0, "alley": 1, "close": 2, "street": 3, "ramp": 4, "main": 5, "country": 5, "motorway": 6}
-PATCH_PER_100_M, TRENCH_PER_100_M, OVERLAY_PER_100_M, STAIN_PER_100_M, MANHOLE_PER_100_M = 1.2, 0.5, 0.5, 1.5, 2.0
+PATCH_PER_100_M, TRENCH_PER_100_M, OVERLAY_PER_100_M, STAIN_PER_100_M, MANHOLE_PER_100_M = (
+    1.2,
+    0.5,
+    0.5,
+    1.5,
+    2.0,
+)
 PATCH_TONE = 0.45
 CRACKED, CRACK_PER_100_M = 0.3, 8.0
 WHEEL_TRACKS, TRAM, GAUGE = 0.3, 0.08, 1.435
@@ -150,7 +156,9 @@ def _tram(rng: Rng, world: World, road: Road) -> list[Cover]:
         out.append(Cover(bed, pick(rng, {"setts": 0.6, "concrete": 0.4}), direction=road.direction))
     offsets = [track + rail for track in (-1.5, 1.5) for rail in (-0.5 * GAUGE, 0.5 * GAUGE)]
     rails = [road.axis.strip(0, road.axis.length, d - 0.05, d + 0.05) for d in offsets]
-    world.others += [OtherLine(LineString(road.axis.parallel(0, road.axis.length, d)), "rail") for d in offsets]
+    world.others += [
+        OtherLine(LineString(road.axis.parallel(0, road.axis.length, d)), "rail") for d in offsets
+    ]
     return [*out, Cover(joined(rails), "metal", 0.2)]
 
 
@@ -196,7 +204,9 @@ def encroach(rng: Rng, stretch: Stretch) -> list[Cover]:
         out.append(Cover(area, pick(rng, BLOWN_MATERIAL), float(rng.normal(0, 0.3)), soft))
     if chance(rng, GROWN[kind]):
         material = stretch.edging.verge_material if "grass" in stretch.edging.verge_material else "grass"
-        out.append(Cover(_ragged(rng, stretch, rng.uniform(0.03, 0.25), 0.05), material, float(rng.normal(0, 0.2))))
+        out.append(
+            Cover(_ragged(rng, stretch, rng.uniform(0.03, 0.25), 0.05), material, float(rng.normal(0, 0.2)))
+        )
     return [c for c in out if not c.area.is_empty]
 
 
@@ -220,5 +230,7 @@ def _normals(points: NDArray[np.float64]) -> NDArray[np.float64]:
 def _wander(rng: Rng, n: int) -> NDArray[np.float64]:
     """A random curve of n values with a spread of about 0.5: rough and smooth together."""
     rough = rng.normal(0, 0.12, n)
-    smooth = np.interp(np.arange(n), np.linspace(0, n - 1, max(2, n // 9)), rng.normal(0, 0.5, max(2, n // 9)))
+    smooth = np.interp(
+        np.arange(n), np.linspace(0, n - 1, max(2, n // 9)), rng.normal(0, 0.5, max(2, n // 9))
+    )
     return rough + smooth

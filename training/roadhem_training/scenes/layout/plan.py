@@ -7,7 +7,7 @@ from dataclasses import dataclass, field, replace
 
 from shapely.geometry import MultiPolygon, Polygon
 
-from roadhem_training.scenes.layout.alignment import Alignment
+from roadhem_training.scenes.layout.alignment import Alignment, Offset
 from roadhem_training.scenes.layout.overlay import joined, less
 from roadhem_training.scenes.world import Body, Cover, Crown, OtherLine, Paint
 
@@ -109,6 +109,11 @@ class Road:
         """The whole carriageway."""
         whole = self.axis.strip(0.0, self.axis.length, -self.half, self.half)
         return less(whole, joined(self.beyond)) if self.beyond else whole
+
+    def beside(self, side: int, s0: float, s1: float, near: Offset, far: Offset, step: float) -> Polygon:
+        """Area on one side (-1 right, 1 left) between two signed offsets, `far` the one further out."""
+        right, left = (far, near) if side < 0 else (near, far)
+        return self.axis.strip(s0, s1, right, left, step)
 
 
 @dataclass(frozen=True)

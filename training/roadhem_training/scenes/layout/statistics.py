@@ -1,6 +1,6 @@
 """Sizes of a place as its outline shows them, to compare invented places with real ones.
 
-    python -m roadhem_training.scenes.layout.statistics OUTLINES.geojson [--style S] [--worlds N]
+python -m roadhem_training.scenes.layout.statistics OUTLINES.geojson [--style S] [--worlds N]
 """
 
 from __future__ import annotations
@@ -99,7 +99,9 @@ def summary(measured: dict[str, NDArray[np.float64]]) -> str:
     lines = []
     for name, values in measured.items():
         marks = " ".join(f"{v:9.2f}" for v in np.percentile(values, PERCENTILES)) if len(values) else "none"
-        sharp = f"  sharp (< 1 m) {np.mean(values < 1):.2f}" if name == "corner_radius" and len(values) else ""
+        sharp = (
+            f"  sharp (< 1 m) {np.mean(values < 1):.2f}" if name == "corner_radius" and len(values) else ""
+        )
         lines.append(f"{name:14s} n={len(values):6d}  {marks}{sharp}")
     return "\n".join(lines)
 
@@ -131,7 +133,9 @@ def main() -> None:
     parser.add_argument("--worlds", type=int, default=6)
     parser.add_argument("--size", type=float, default=200.0)
     given = parser.parse_args()
-    print(f"percentiles {PERCENTILES}\n{given.outlines.name}\n{summary(real_statistics(given.outlines, given.crs))}")
+    print(
+        f"percentiles {PERCENTILES}\n{given.outlines.name}\n{summary(real_statistics(given.outlines, given.crs))}"
+    )
     for style in given.styles.split(","):
         frame = box(0, 0, given.size, given.size)
         worlds = [make_world(seed, given.size, style) for seed in range(given.worlds)]

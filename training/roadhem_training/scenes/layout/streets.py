@@ -24,6 +24,7 @@ from roadhem_training.scenes.layout.plan import Edging, Plan, Road
 from roadhem_training.scenes.layout.surface import PLAN_REACH, rough_surface
 
 Rng = np.random.Generator
+SMALL_FRAME = 70.0  # metres; smaller frames stay near junctions, so that they show edges
 Axis = tuple[LineString, str]
 
 
@@ -36,7 +37,7 @@ def street_axes(rng: Rng, size: float, reach: float, rules: StreetOdds) -> list[
     if chance(rng, rules.warp):
         bend = _bend(rng)
         axes = [(_apply(bend, line), rank) for line, rank in axes]
-    x, y = (_open_spot if rules.in_block else _focus)(rng, axes, extent, size)
+    x, y = (_open_spot if rules.in_block and size > SMALL_FRAME else _focus)(rng, axes, extent, size)
     axes = [(shapely.affinity.translate(line, 0.5 * size - x, 0.5 * size - y), rank) for line, rank in axes]
     window = box(-reach, -reach, size + reach, size + reach)
     return [(line, rank) for line, rank in axes if line.intersects(window)]
@@ -197,7 +198,12 @@ def flush_edging(rng: Rng) -> Edging:
     wide = pick_between(rng, odds.SHOULDER)
     stone = rng.uniform(0.08, 0.25) if chance(rng, 0.15) else 0.0
     return Edging(
-        "flush", 0.0, stone=stone, stone_material=pick(rng, odds.STONE_ODDS), verge=wide, verge_material=shoulder
+        "flush",
+        0.0,
+        stone=stone,
+        stone_material=pick(rng, odds.STONE_ODDS),
+        verge=wide,
+        verge_material=shoulder,
     )
 
 
