@@ -14,6 +14,7 @@ from shapely.geometry.base import BaseGeometry
 from roadhem_training.scenes.layout.plan import Edging, Plan
 
 SHORTEST = 0.8  # metres of boundary that one owner holds at least
+DECIMALS = 7  # of coordinates, metres: the same place gives the same numbers whichever way it is reached
 SAMPLE = 0.5  # metres between the places where the owner of a boundary is asked
 
 
@@ -124,8 +125,11 @@ class Chain:
 
     def points(self, s: NDArray[np.float64]) -> NDArray[np.float64]:
         """Points (n, 2) at metres `s`, counted on beyond the end."""
-        s = np.mod(s, self.length)
-        return np.stack([np.interp(s, self.s, self.xy[:, 0]), np.interp(s, self.s, self.xy[:, 1])], axis=1)
+        return self._between(np.mod(s, self.length))
+
+    def _between(self, s: NDArray[np.float64]) -> NDArray[np.float64]:
+        xy = np.stack([np.interp(s, self.s, self.xy[:, 0]), np.interp(s, self.s, self.xy[:, 1])], axis=1)
+        return np.round(xy, DECIMALS)
 
     def piece(self, s0: float, s1: float) -> LineString:
         """The line from metre s0 to s1 > s0; s1 may lie beyond the end by less than one round."""
@@ -161,7 +165,7 @@ class OpenChain(Chain):
 
     def points(self, s: NDArray[np.float64]) -> NDArray[np.float64]:
         """Points (n, 2) at metres `s`."""
-        return np.stack([np.interp(s, self.s, self.xy[:, 0]), np.interp(s, self.s, self.xy[:, 1])], axis=1)
+        return self._between(s)
 
     def piece(self, s0: float, s1: float) -> LineString:
         """The line from metre s0 to s1."""
