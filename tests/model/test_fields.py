@@ -270,7 +270,7 @@ SPOILED: dict[str, tuple[Callable[[Path], object], str]] = {
     "fewer outputs": (lambda folder: write_model(folder, deep_net(fields=13)), "other fields"),
     "no halo": (lambda folder: _change_card(folder, receptive_field=None), "receptive_field"),
     "no calibration": (lambda folder: _change_card(folder, calibration={"a": "x"}), "calibration"),
-    "no card": (lambda folder: (folder / "card.json").unlink(), "has no card.json"),
+    "no card": (lambda folder: (folder / "card.json").unlink(), "is not a Roadhem model"),
     "no weights": (lambda folder: (folder / "weights.onnx").unlink(), "has no weights.onnx"),
     "card of text": (lambda folder: (folder / "card.json").write_text("{oh"), "cannot be read"),
     "card of numbers": (lambda folder: (folder / "card.json").write_text("[1]"), "no model's card"),

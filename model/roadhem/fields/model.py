@@ -7,20 +7,17 @@ import json
 import os
 from dataclasses import dataclass, field
 from functools import cache, cached_property
-from importlib import resources
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 import onnxruntime
-import platformdirs
 
 from roadhem.errors import BadInput
 from roadhem.fields.inputs import DEVIATION, INPUTS, MEAN
 from roadhem.fields.layout import NET_FIELDS, NET_STRIDE, QUANTUM
+from roadhem.state import CARD, WEIGHTS, find_model
 from roadhem.tiles.grid import PIXEL_M
-
-WEIGHTS, CARD = "weights.onnx", "card.json"
 
 STRIDE = 16
 """Working pixels per cell of the net's coarsest level: the corners of blocks are multiples of it."""
@@ -67,7 +64,7 @@ class Model:
         BadInput
             If there is none, or its weights do not fit its card or this version of Roadhem.
         """
-        folder = _folder(path_or_name)
+        folder = find_model(None if path_or_name is None else os.fspath(path_or_name))
         card = _card(folder)
         name = str(card.get("name", ""))
         weights = folder.joinpath(WEIGHTS).read_bytes()
@@ -127,34 +124,6 @@ def _share_arena() -> None:
     kind, use = onnxruntime.OrtAllocatorType.ORT_ARENA_ALLOCATOR, onnxruntime.OrtMemType.DEFAULT
     defaults = onnxruntime.OrtArenaCfg(0, -1, -1, -1)
     onnxruntime.create_and_register_allocator(onnxruntime.OrtMemoryInfo("Cpu", kind, 0, use), defaults)
-
-
-def shelf_home() -> Path:
-    """Folder of the models that are not shipped."""
-    home = os.environ.get("ROADHEM_HOME") or platformdirs.user_data_dir("roadhem", appauthor=False)
-    return Path(home) / "shelf"
-
-
-def _shipped() -> Path:
-    return Path(str(resources.files("roadhem") / "shelf"))
-
-
-def _folder(path_or_name: str | os.PathLike[str] | None) -> Path:
-    """Folder of a model: the shipped one, a path, or a name on the shelf."""
-    shipped = _shipped()
-    if path_or_name is None:
-        return shipped
-    path = Path(path_or_name)
-    if path.is_file():
-        return path.parent
-    if path.is_dir():
-        return path
-    name = str(path_or_name)
-    if (shipped / CARD).is_file() and _card(shipped).get("name") == name:
-        return shipped
-    if path.name == name and (shelf_home() / name).is_dir():
-        return shelf_home() / name
-    raise BadInput(f"There is no model {name}; see `roadhem shelf list` for those there are.")
 
 
 def _card(folder: Path) -> dict[str, Any]:
