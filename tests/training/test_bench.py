@@ -36,7 +36,7 @@ from roadhem_training.bench.page import Part, Picture, Sheet, cells, figure_text
 from roadhem_training.bench.pictures import window
 from roadhem_training.bench.probes import CLEAR_M, MARKING_CLEAR_M, clear_places, marking_places, probe
 from roadhem_training.bench.samples import along_lines, nearest, runs_of
-from roadhem_training.bench.sets import FIRST_SEED, real_sets
+from roadhem_training.bench.sets import FIRST_SEED, LIDAR, REAL, real_sets
 from roadhem_training.bench.truth import Truth
 
 
@@ -276,7 +276,9 @@ def test_real_sets_are_optional(tmp_path: Path):
         (tmp_path / name).mkdir()
         (tmp_path / name / "edges.gpkg").touch()
     (tmp_path / "whole" / "seeds.gpkg").touch()
-    assert [one.name for one in real_sets(tmp_path)] == ["whole"]
+    assert [(one.name, one.group) for one in real_sets(tmp_path)] == [("whole", LIDAR)]
+    (tmp_path / "whole" / "image.tif").touch()
+    assert [(one.name, one.group) for one in real_sets(tmp_path)] == [("whole", REAL)]
 
 
 def drawn_set(folder: Path) -> None:

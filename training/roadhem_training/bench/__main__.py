@@ -22,7 +22,7 @@ from roadhem_training.bench.findings import Findings, examine_all, figures_of
 from roadhem_training.bench.page import write_bench_page
 from roadhem_training.bench.report import parts_of
 from roadhem_training.bench.rivals import Tuned, tuned_rivals
-from roadhem_training.bench.sets import INVENTED, REAL, invented_sets, real_sets
+from roadhem_training.bench.sets import invented_sets, real_sets
 
 
 @click.command()
@@ -35,9 +35,9 @@ def main(model: Path, out: Path, scenes: int, real: Path) -> None:
     lines = out / "lines"
     lines.mkdir(parents=True, exist_ok=True)
     missing = "" if real.is_dir() else f"{real.parent} is missing: nothing was measured on real sets."
-    sets = {INVENTED: invented_sets(out / "scenes", scenes), REAL: real_sets(real)}
     try:
-        groups = {group: examine_all(members, model, lines) for group, members in sets.items() if members}
+        sets = [*invented_sets(out / "scenes", scenes), *real_sets(real)]
+        groups = grouped(examine_all(sets, model, lines))
     except RoadhemError as error:
         raise click.ClickException(str(error)) from error
     figures = {group: figures_of(found) for group, found in groups.items()}
@@ -51,13 +51,21 @@ def main(model: Path, out: Path, scenes: int, real: Path) -> None:
     write_bench_page(
         out / "index.html",
         f"What model “{card['name']}” is worth",
-        f"{len(groups[INVENTED])} invented scenes it was never trained on and {len(groups.get(REAL, []))} real sets; "
+        f"{scenes} invented scenes it was never trained on and {len(sets) - scenes} real sets; "
         f"trained for {card['training'].get('steps', '?')} steps.",
         f"Measured {made} by",
         command,
         parts_of(groups, figures, rivals, cases_of(groups), missing),
     )
     click.echo(f"{missing + chr(10) if missing else ''}page {out / 'index.html'}, figures {out / 'figures.json'}")
+
+
+def grouped(found: list[Findings]) -> dict[str, list[Findings]]:
+    """Sort findings by the group of their set, in the order of the sets."""
+    groups: dict[str, list[Findings]] = {}
+    for one in found:
+        groups.setdefault(one.bench_set.group, []).append(one)
+    return groups
 
 
 def cases_of(groups: dict[str, list[Findings]]) -> dict[str, Any]:

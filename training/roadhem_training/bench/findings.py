@@ -74,7 +74,7 @@ def examine_all(sets: Sequence[BenchSet], model: Path, out: Path) -> list[Findin
         found.append(one)
         figures = line_figures([one.comparison])
         click.echo(
-            f"{bench_set.group:9s}{bench_set.title:22s}"
+            f"{bench_set.group:18s}{bench_set.title:20s}"
             f"{figures['truth, m']:7.0f} m  completeness {figures['completeness at 0.30 m']:.3f}"
             f"  correctness {figures['correctness at 0.30 m']:.3f}"
         )

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 
-from roadhem_training.bench.sets import INVENTED, REAL
+from roadhem_training.bench.sets import INVENTED, LIDAR, REAL
 
 
 @dataclass(frozen=True)
@@ -47,6 +47,7 @@ GOALS: dict[str, dict[str, Goal]] = {
         "lateral median, m": Goal(0.10, at_most=True),
         "unplaced far from any edge": Goal(0.95),
     },
+    LIDAR: {},
 }
 
 COVERED = {"68%": (0.63, 0.73), "95%": (0.92, 0.97)}

@@ -27,6 +27,7 @@ from roadhem_training.bench.truth import Lines
 SIDE_INCHES, DPI = 4.2, 100
 JPEG = {"quality": 82}
 TRUE_COLOUR, UNSCORED_COLOUR, TRACED_COLOUR, SEED_COLOUR = "#3fd0ff", "#b9b4ff", "#ff9d1c", "#ffffff"
+GROUP_STYLES = (("#0a6ea8", "-"), ("#b4540a", "--"), ("#3b7a2a", "-."))
 NOMINAL = np.linspace(0.02, 0.98, 49)
 
 
@@ -72,7 +73,7 @@ def draw_reliability(groups: Sequence[tuple[str, Misses]]) -> str:
     FigureCanvasAgg(figure)
     axes = figure.add_subplot()
     axes.plot([0, 1], [0, 1], color=FAINT, lw=1, ls=":", label="as stated")
-    for (name, misses), (colour, dash) in zip(groups, (("#0a6ea8", "-"), ("#b4540a", "--")), strict=False):
+    for (name, misses), (colour, dash) in zip(groups, GROUP_STYLES, strict=False):
         label = f"{name}, {len(misses.error)} places"
         axes.plot(NOMINAL, held_shares(misses, NOMINAL), color=colour, ls=dash, lw=2, label=label)
     axes.set(xlim=(0, 1), ylim=(0, 1), xlabel="share the interval should hold", ylabel="share it holds", aspect=1)

@@ -54,7 +54,7 @@ class Traced:
 def trace_set(bench_set: BenchSet, model: Path, out: Path) -> Traced:
     """Trace a set's seeds; the GeoPackage stays in `out`."""
     source = str(bench_set.folder / SEEDS)
-    job = TraceJob(bench_set.inputs(model), source, out / f"{bench_set.group}_{bench_set.name}.gpkg")
+    job = TraceJob(bench_set.inputs(model), source, out / f"{bench_set.name}.gpkg")
     summary = trace_tiles(job, open_session, lambda done, total: None)
     session, layers = summary.session, summary.layers
     lines = _in_metres(layers.edges.geometry, session.grid)

@@ -25,14 +25,15 @@ SIZE, PIXEL_M = 1024, 0.10
 ORIGIN = (500_019.2, 5_600_000.0)
 """A corner shared by pages of fields, so that a scene is 2 x 2 of them."""
 
-INVENTED, REAL = "invented", "real"
-IMAGES, HEIGHTS = ("image.tif", "intensity.tif"), ("height.tif",)
+INVENTED, REAL, LIDAR = "invented", "real photographs", "real LiDAR"
+PHOTOGRAPH = "image.tif"
+IMAGES, HEIGHTS = (PHOTOGRAPH, "intensity.tif"), ("height.tif",)
 TRUTH, SEEDS, OTHERS = "edges.gpkg", "seeds.gpkg", "others.gpkg"
 
 
 @dataclass(frozen=True)
 class BenchSet:
-    """Tiles with seeds and truth. group : INVENTED or REAL; about : a few words for the page."""
+    """Tiles with seeds and truth. group : INVENTED, REAL or LIDAR; about : a few words for the page."""
 
     name: str
     group: str
@@ -64,7 +65,7 @@ def real_sets(folder: Path) -> list[BenchSet]:
     if not folder.is_dir():
         return []
     whole = [path for path in sorted(folder.iterdir()) if (path / TRUTH).exists() and (path / SEEDS).exists()]
-    return [BenchSet(path.name, REAL, path) for path in whole]
+    return [BenchSet(path.name, REAL if (path / PHOTOGRAPH).exists() else LIDAR, path) for path in whole]
 
 
 def _invented(folder: Path, seed: int) -> BenchSet:
