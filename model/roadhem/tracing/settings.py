@@ -82,6 +82,8 @@ class Settings:
     """Metres either way within which the canonical point of a line cut by its limit is looked for."""
 
     # Both ways along the line.
+    loop_touch_m: float = 0.3
+    """Metres from an earlier place of the line at which an end lies on the line itself."""
     loop_tail_m: float = 4.0
     """Metres of its beginning that a loop may lose where it closes."""
 

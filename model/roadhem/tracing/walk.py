@@ -8,7 +8,7 @@ import numpy as np
 
 from roadhem.tracing.bridge import bridge
 from roadhem.tracing.corner import turn_corner
-from roadhem.tracing.follow import ENDED, FADED, LIMIT, LOOPED, OVERLAP, SIGHT, TRAVEL
+from roadhem.tracing.follow import ENDED, FADED, LIMIT, LOOPED, OVERLAP, SIGHT, TRAVEL, X, Y
 from roadhem.tracing.settings import Settings
 from roadhem.tracing.sheet import NO_DATA, OUTSIDE, Sheet
 from roadhem.tracing.stretch import Rows, Walked, turned, walk_on
@@ -55,6 +55,8 @@ def plain(sheet: Sheet, start: Rows, limit_m: float, settings: Settings) -> Run:
 def further(sheet: Sheet, walked: Walked, budget_m: float, settings: Settings) -> tuple[Walked, str]:
     """Carry on round corners and across gaps from where following stopped; the rows, and why the line stops."""
     while walked.code in (ENDED, FADED):
+        if _came_round(walked.rows, settings):
+            return walked, "looped"
         rows = turn_corner(sheet, walked.rows, settings)
         if rows is None:
             rows = bridge(sheet, walked.rows, walked.code == ENDED, settings)
@@ -63,6 +65,12 @@ def further(sheet: Sheet, walked: Walked, budget_m: float, settings: Settings) -
             return walked, "end" if clear else "unsure"
         walked = walk_on(sheet, rows, budget_m, settings)
     return walked, REASON[walked.code]
+
+
+def _came_round(rows: Rows, settings: Settings) -> bool:
+    """Whether the line ends on itself: round the next corner it would only go the same way again."""
+    earlier = rows[rows[-1, TRAVEL] - rows[:, TRAVEL] >= settings.pace.loop_least]
+    return bool((np.hypot(*(earlier[:, [X, Y]] - rows[-1, [X, Y]]).T) < settings.loop_touch_m).any())
 
 
 def whole(sheet: Sheet, start: Rows, limit_m: float, settings: Settings) -> Line:
