@@ -19,6 +19,7 @@ from roadhem_training.scenes.world import MARGIN, World
 STYLES = list(STYLE_ODDS)
 SIDE_STEP = 0.05  # metres to either side of an edge at which the surface is asked
 CHORD_ERROR = 0.005  # metres
+SAME = 1e-5  # metres within which two lines are one
 PUBLISHED_RADII = (1.5, 3.0, 4.5, 7.5, 10.7, 15.0)  # spread of handbook curb returns: yardsticks.md §3 [read]
 
 
@@ -80,8 +81,8 @@ def test_edges_cover_the_outline_exactly(style: str):
     assert sum(e.line.length for e in world.edges) == pytest.approx(outline.length, abs=0.05)
     if world.edges:
         drawn = shapely.union_all([e.line for e in world.edges])
-        assert drawn.difference(outline.buffer(1e-6)).length < 0.05
-        assert outline.difference(drawn.buffer(1e-6)).length < 0.05
+        assert drawn.difference(outline.buffer(SAME)).length < 0.05
+        assert outline.difference(drawn.buffer(SAME)).length < 0.05
 
 
 @pytest.mark.parametrize("style", TOWNS)
