@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import os
 import sys
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
@@ -16,6 +17,9 @@ if TYPE_CHECKING:
 
 F = TypeVar("F", bound=Callable[..., Any])
 
+THREADS = 2
+"""More threads hardly speed up a net as small as ours."""
+
 PATH = click.Path(path_type=Path)
 
 
@@ -27,7 +31,7 @@ def tiles_options(verb: F) -> F:
         click.option("--model", metavar="NAME|PATH", help="A model of the shelf or a model folder."),
         click.option("--crs", metavar="CRS", help="For tiles that name none, for example EPSG:25832."),
         click.option(
-            "--threads", type=int, default=1, show_default=True, metavar="N", help="Threads of the net per process."
+            "--threads", type=int, metavar="N", help=f"Threads of the net a process; else the cores, up to {THREADS}."
         ),
     ]
     return _apply(verb, decorators)
@@ -40,13 +44,20 @@ ballpark_option = click.option(
 
 
 def inputs_of(
-    tiles: tuple[Path, ...], height: tuple[Path, ...], model: str | None, crs: str | None, threads: int
+    tiles: tuple[Path, ...],
+    height: tuple[Path, ...],
+    model: str | None,
+    crs: str | None,
+    threads: int | None,
+    workers: int = 1,
 ) -> Inputs:
-    """Bring a verb's options to the inputs of a job."""
+    """Bring a verb's options to the inputs of a job; `workers` processes share the cores."""
     from roadhem.errors import BadInput
     from roadhem.jobs.session import Inputs
     from roadhem.state import find_model
 
+    if threads is None:
+        threads = max(1, min(THREADS, (os.cpu_count() or 1) // max(workers, 1)))
     if threads < 1:
         raise BadInput("--threads must be at least 1")
     return Inputs(tiles, height, crs, find_model(model), threads)

@@ -56,7 +56,7 @@ def trace(
 
     if picture is not None:
         check_target(picture, (".png",))
-    job = TraceJob(inputs_of(**tiles_and_model), seeds, out, workers, resume, allow_ballpark)
+    job = TraceJob(inputs_of(**tiles_and_model, workers=workers), seeds, out, workers, resume, allow_ballpark)
     with progress_bar("seeds") as progress:
         summary = trace_tiles(job, open_session, progress)
     if picture is not None:
