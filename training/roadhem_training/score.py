@@ -51,12 +51,25 @@ def _shown(name: str, by_buffer: dict[float, LineMeasures]) -> str:
     return f"{name:24s} {wide.reference_m:8.0f} " + " ".join("   –  " if c is None else f"{c:6.3f}" for c in cells)
 
 
+def write_scores(card: Path, group: str, sets: Sequence[str], scores: dict[str, tuple[float, float]]) -> None:
+    """Note in a model's card how it did on sets it was not trained on."""
+    content = json.loads(card.read_text())
+    content["scores"][group] = {
+        "sets": list(sets),
+        **{f"{name}_at_{buffer}_m": round(value, 3) for buffer, pair in scores.items()
+           for name, value in zip(("completeness", "correctness"), pair, strict=True)},
+    }  # fmt: skip
+    part = card.with_suffix(".part")
+    part.write_text(json.dumps(content, indent=2) + "\n")
+    part.replace(card)
+
+
 @click.command()
 @click.argument("folders", nargs=-1, required=True, type=click.Path(exists=True, file_okay=False, path_type=Path))
 @click.option("--model", type=click.Path(exists=True, path_type=Path), required=True)
 @click.option("--out", type=click.Path(file_okay=False, path_type=Path), help="Keep the traced lines here.")
-@click.option("--json", "json_out", type=click.Path(dir_okay=False, path_type=Path), help="Write pooled scores here.")
-def main(folders: tuple[Path, ...], model: Path, out: Path | None, json_out: Path | None) -> None:
+@click.option("--card", "group", metavar="GROUP", help="Write the pooled scores into the model's card as GROUP.")
+def main(folders: tuple[Path, ...], model: Path, out: Path | None, group: str | None) -> None:
     """Score a model on FOLDERS."""
     print(f"{'set':24s} {'truth m':>8s}  c.15   r.15   c.30   r.30   redun  median  p95")
     with tempfile.TemporaryDirectory() as scratch:
@@ -68,8 +81,9 @@ def main(folders: tuple[Path, ...], model: Path, out: Path | None, json_out: Pat
     all_pooled = {f"{buffer:.2f}": pooled([r[buffer] for r in results.values()]) for buffer in BUFFERS_M}
     for buffer, (completeness, correctness) in all_pooled.items():
         print(f"pooled at {buffer} m: completeness {completeness:.3f}, correctness {correctness:.3f}")
-    if json_out:
-        json_out.write_text(json.dumps({"sets": sorted(results), "pooled": all_pooled}, indent=2) + "\n")
+    if group:
+        write_scores(model / "card.json", group, sorted(results), all_pooled)
+
 
 
 if __name__ == "__main__":
