@@ -5,7 +5,7 @@ from __future__ import annotations
 import itertools
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -16,6 +16,7 @@ from roadhem.fields.layout import (
     CELL_M,
     CHANNELS,
     COVER,
+    COVER_NO_DATA,
     COVER_OUTSIDE,
     COVER_VALID,
     KINDS,
@@ -27,6 +28,8 @@ from roadhem.fields.layout import (
 PAGE = 256
 HALO = 10
 DENSE_M = 0.04
+
+Box = tuple[float, float, float, float]
 
 
 def densify(line: ArrayLike, spacing: float = DENSE_M) -> NDArray[np.float64]:
@@ -57,18 +60,19 @@ class MadeFields:
     edges, others : lines in grid metres.
     gaps : (x, y, radius): round places where nothing is seen.
     bounds : what the tiles cover, grid metres (minx, miny, maxx, maxy); None: everywhere.
+    holes : boxes like `bounds` in which the tiles hold no data.
     peak : nearness on a well seen edge. blur_m : spread of the softening. noise_m : of the offsets, per cell.
     """
 
     edges: Sequence[Edge]
     others: Sequence[ArrayLike] = ()
     gaps: Sequence[tuple[float, float, float]] = ()
-    bounds: tuple[float, float, float, float] | None = None
+    bounds: Box | None = None
+    holes: Sequence[Box] = ()
     peak: float = 0.9
     blur_m: float = 0.2
     noise_m: float = 0.0
     seed: int = 0
-    asked: list[tuple[int, int]] = field(default_factory=list)
 
     def __post_init__(self) -> None:
         points, axes, kinds, lanes = [], [], [], []
@@ -88,7 +92,6 @@ class MadeFields:
 
     def page(self, p: int, q: int) -> NDArray[np.int16] | None:
         """Return the page, drawn at the first call."""
-        self.asked.append((p, q))
         if (p, q) not in self._pages:
             self._pages[p, q] = self._draw(p, q)
         return self._pages[p, q]
@@ -107,6 +110,8 @@ class MadeFields:
         for c, name in enumerate(NET_FIELDS):
             page[..., c] = np.rint(fields[c] / QUANTUM.get(name, 1e-4))
         page[..., COVER] = COVER_VALID
+        for x0, y0, x1, y1 in self.holes:
+            page[(x > x0) & (x < x1) & (y > y0) & (y < y1), COVER] = COVER_NO_DATA
         if self.bounds is not None:
             x0, y0, x1, y1 = self.bounds
             page[(x < x0) | (x > x1) | (y < y0) | (y > y1), COVER] = COVER_OUTSIDE
@@ -132,7 +137,8 @@ class MadeFields:
         at = {name: k for k, name in enumerate(NET_FIELDS)}
         fields[at["nearness"]] = np.clip(1.0 - distance / REACH_M, 0.0, 1.0) * self.peak * (1.0 - 0.95 * hide)
         if self._others is not None:
-            fields[at["other"]] = self.peak * np.clip(1.0 - self._others.query(place, distance_upper_bound=3.0)[0] / REACH_M, 0.0, 1.0)
+            away = self._others.query(place, distance_upper_bound=REACH_M)[0]
+            fields[at["other"]] = self.peak * np.clip(1.0 - away / REACH_M, 0.0, 1.0)
         fields[at["dx"]], fields[at["dy"]] = offset[..., 0] * (1.0 - 0.8 * hide), offset[..., 1] * (1.0 - 0.8 * hide)
         fields[at["cos2"]] = axis[..., 0] ** 2 - axis[..., 1] ** 2
         fields[at["sin2"]] = 2.0 * axis[..., 0] * axis[..., 1]

@@ -44,7 +44,7 @@ def bridge(sheet: Sheet, rows: Rows, ended: bool, settings: Settings) -> Rows | 
         if _ahead(row, rows[-1]) < settings.pace.step_max or any(_lies_on(row, proof) for proof in tried):
             continue
         proof, sure = _proof(sheet, row, rows[-1], settings)
-        if sure and side(proof) * surface > 0:
+        if sure and side(proof) * np.sign(surface) >= settings.contrast:
             before = rows[rows[:, TRAVEL] <= kept[-1, TRAVEL]]
             return _across(before, arc, proof, settings)
         tried.append(proof)
@@ -70,7 +70,8 @@ def _landings(sheet: Sheet, arc: Arc, surface: float, longest_m: float, settings
     turn = np.arccos(np.clip(np.sum(found[:, [TX, TY]] * headings, axis=1), -1.0, 1.0))
     allowed = np.radians(settings.bridge_turn + settings.bridge_turn_per_m * ahead[index])
     fits = (found[:, NEAR] >= settings.sure) & (np.abs(aside) <= wide[index]) & (turn <= allowed)
-    fits &= (along <= settings.pace.step_max) & ((found[:, LEFT] - found[:, RIGHT]) * surface > 0.1)
+    fits &= (found[:, LEFT] - found[:, RIGHT]) * np.sign(surface) >= settings.contrast
+    fits &= along <= settings.pace.step_max
     cost = (aside / wide[index]) ** 2 + (turn / allowed) ** 2 + ahead[index] / settings.bridge_m - found[:, NEAR]
     order = np.lexsort((found[:, Y], found[:, X], np.round(cost, 6)))
     return [found[k] for k in order if fits[k]]

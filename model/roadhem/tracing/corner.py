@@ -70,7 +70,7 @@ def _candidates(sheet: Sheet, rows: Rows, settings: Settings) -> list[tuple[Rows
     away = found[:, [X, Y]] - here
     distance = np.hypot(*away.T)
     fits = (found[:, NEAR] >= settings.pace.present) & (distance >= settings.corner_blur_m)
-    fits &= (found[:, LEFT] - found[:, RIGHT]) * side(rows[-20:]) > 0
+    fits &= (found[:, LEFT] - found[:, RIGHT]) * np.sign(side(rows[-20:])) >= settings.contrast
     ways = []
     for row, far in zip(found[fits], distance[fits], strict=True):
         turn = abs(turn_of(blunt.direction, row[[TX, TY]]))
@@ -134,6 +134,8 @@ def _proved(
             return None
     least = min(max(0.5 * gap, settings.corner_proof_m), settings.bridge_proof_m)
     if after[-1, TRAVEL] - after[0, TRAVEL] < least and code not in (OUTSIDE, NO_DATA):
+        return None
+    if np.mean(after[:, NEAR]) < settings.sure:
         return None
     return _Exit(leg, after, corner, blur_m, gap) if gap <= settings.corner_both_m else None
 

@@ -15,7 +15,7 @@ from roadhem.tracing.legs import between, straight, turn_of
 from roadhem.tracing.result import Doubt
 from roadhem.tracing.ridge import buffer
 from roadhem.tracing.settings import Settings
-from roadhem.tracing.sheet import COS2, DX, DY, MISSING, NEARNESS, SIN2, VALID, Sheet, sample
+from roadhem.tracing.sheet import DX, DY, MISSING, NEARNESS, VALID, Sheet, sample
 from roadhem.tracing.stretch import Rows
 
 
@@ -26,12 +26,11 @@ def neighbours(table, origin, rows, every, asides, pace, found, values):  # type
     Parameters
     ----------
     rows : with TRAVEL measured along them. every : metres between looks. asides : metres beside the line to look at.
-    found : (n, 2) float64, filled with the distance of the nearest other edge (m; infinite where there is none) and
-        the angle it makes with the line (radians).
+    found : (n,) float64, filled with the distance of the nearest other edge, metres; infinite where there is none.
     """
     next_look = rows[0, TRAVEL]
     for k in range(len(rows)):
-        found[k, 0] = math.inf
+        found[k] = math.inf
         if rows[k, TRAVEL] < next_look:
             continue
         next_look = rows[k, TRAVEL] + every
@@ -43,10 +42,8 @@ def neighbours(table, origin, rows, every, asides, pace, found, values):  # type
             if code != VALID or values[0, NEARNESS] < pace.present:
                 continue
             away = d + values[0, DY] * tx - values[0, DX] * ty
-            if away * d > 0.0 and abs(away) > 0.5 * abs(d) and abs(away) < found[k, 0]:
-                theta = 0.5 * math.atan2(values[0, SIN2], values[0, COS2])
-                found[k, 0] = abs(away)
-                found[k, 1] = math.acos(min(1.0, abs(math.cos(theta) * tx + math.sin(theta) * ty)))
+            if away * d > 0.0 and abs(away) > 0.5 * abs(d) and abs(away) < found[k]:
+                found[k] = abs(away)
     return VALID
 
 
@@ -57,7 +54,7 @@ def find_doubts(sheet: Sheet, rows: Rows, bridged: NDArray[np.bool_], settings: 
     ----------
     rows : with TRAVEL measured along them. bridged : where the edge itself is hidden.
     """
-    found = np.zeros((len(rows), 2))
+    found = np.zeros(len(rows))
     asides = np.array(settings.neighbour_asides_m)
     sheet.run(neighbours, rows, settings.neighbour_every_m, asides, settings.pace, found, buffer())
     weak = ~bridged & (rows[:, SIGMA] >= settings.doubt_sigma_m)
@@ -103,18 +100,17 @@ def _stretches(
 
 def _other_edges(rows: Rows, found: NDArray[np.float64], settings: Settings) -> Iterator[tuple[float, Doubt]]:
     """Edges that leave the line at an angle (forks) or run beside it; one doubt for each that goes on."""
-    looks = np.flatnonzero(np.isfinite(found[:, 0]))
+    looks = np.flatnonzero(np.isfinite(found))
     apart = np.flatnonzero(np.diff(rows[looks, TRAVEL]) > 3.0 * settings.neighbour_every_m) + 1
     for group in np.split(looks, apart):
         if len(group) < 2:
             continue
-        nearest = int(group[np.argmin(found[group, 0])])
-        spread = np.ptp(found[group, 0])
-        angle = float(np.median(found[group, 1]))
-        if angle >= settings.fork_angle and spread >= 0.3:
+        nearest = int(group[np.argmin(found[group])])
+        spread, length = np.ptp(found[group]), np.ptp(rows[group, TRAVEL])
+        if spread >= settings.fork_spread_m and spread >= settings.fork_slope * length:
             yield _doubt(rows, nearest, "fork", 0.5)
-        elif angle < settings.fork_angle:
-            yield _doubt(rows, nearest, "competing_line", 1.0 - found[nearest, 0] / 2.0)
+        else:
+            yield _doubt(rows, nearest, "competing_line", 1.0 - float(found[nearest]) / 2.0)
 
 
 def _corners(rows: Rows, settings: Settings) -> Iterator[tuple[float, Doubt]]:

@@ -20,17 +20,18 @@ from roadhem.tracing.sheet import (
     sample,
 )
 
-FADED, ENDED, LOOPED, OVERLAP, LIMIT, FULL = range(4, 10)
-"""Why following stopped, beside what `sample` may meet."""
+FADED, ENDED, BARE, LOOPED, OVERLAP, LIMIT, FULL = range(4, 11)
+"""Why following stopped, beside what `sample` may meet: the line faded, was seen to end, divides no surface any
+more, came back to itself in its own heading or against it, is as long as allowed, or fills the rows."""
 
-X, Y, TX, TY, BEND, TRAVEL, SIGMA, KIND, SIGHT, NEAR, BESIDE, LEFT, RIGHT, COAST, FORM = (
-    0, 1, 2, 3, 4, 5, 6, 7, 10, 13, 14, 15, 16, 17, 18,
+X, Y, TX, TY, BEND, TRAVEL, SIGMA, KIND, SIGHT, NEAR, BESIDE, LEFT, RIGHT, SIDE, COAST, FORM = (
+    0, 1, 2, 3, 4, 5, 6, 7, 10, 13, 14, 15, 16, 17, 18, 19,
 )  # fmt: skip
 """Columns of a row: place, heading, curvature to the left (1/m), metres travelled, standard error (m), three
-probabilities of kind, three of sight, nearness, nearness of other lines, drive-over surface left and right, metres
-since the line was last seen, and what the point is: one of the forms."""
+probabilities of kind, three of sight, nearness, nearness of other lines, drive-over surface left and right, running
+mean of left minus right, metres since the line was last seen, and what the point is: one of the forms."""
 
-COLUMNS = 19
+COLUMNS = 20
 
 FOLLOWED, CORNER, BRIDGE, HAND = range(4)
 """Forms of a point: found on the line, the vertex of a sharp corner, across a hidden stretch, given by a person."""
@@ -56,6 +57,7 @@ def put_row(table, origin, row, x, y, tx, ty, values):  # type: ignore[no-untype
         if code == MISSING:
             return code
         row[LEFT if side == 1 else RIGHT] = values[1, SURFACE] if code == VALID else 0.5
+    row[SIDE] = row[LEFT] - row[RIGHT]
     return VALID
 
 
@@ -130,6 +132,7 @@ def end_row(table, origin, rows, n, x, y, pace, values):  # type: ignore[no-unty
     if code != VALID:
         return code, n
     row[TRAVEL], row[COAST], row[BEND], row[FORM] = last[TRAVEL] + short, 0.0, last[BEND], last[FORM]
+    row[SIDE] = last[SIDE]
     if short > 0.0:
         return VALID, n + 1
     rows[n - 1] = row
@@ -186,7 +189,13 @@ def follow(table, origin, rows, n, budget, pace, values):  # type: ignore[no-unt
             fresh = 1.0 - math.exp(-step / pace.memory)
             bend = (1.0 - fresh) * last[BEND] + fresh * turn / step
             row[BEND] = min(max(bend, -pace.bend_max), pace.bend_max)
+        fresh = 1.0 - math.exp(-step / pace.side_memory)
+        row[SIDE] = (1.0 - fresh) * last[SIDE] + fresh * row[SIDE]
         n += 1
+        if abs(row[SIDE]) < pace.bare:
+            while n > 1 and abs(rows[n - 1, LEFT] - rows[n - 1, RIGHT]) < pace.dividing:
+                n -= 1
+            return BARE, n, -1
         k = met(rows, n, pace)
         if k >= 0:
             same = rows[k, TX] * tx + rows[k, TY] * ty > 0.0

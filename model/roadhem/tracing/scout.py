@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from roadhem.tracing.compiled import compiled
-from roadhem.tracing.follow import COLUMNS, LEFT, NEAR, RIGHT, TX, TY, X, Y, put_row
+from roadhem.tracing.follow import COLUMNS, LEFT, NEAR, RIGHT, SIDE, TX, TY, X, Y, put_row
 from roadhem.tracing.ridge import buffer, settle
 from roadhem.tracing.settings import Settings
 from roadhem.tracing.sheet import GEOMETRY, MISSING, NEARNESS, VALID, Sheet, sample
@@ -53,6 +53,6 @@ def outward(rows: Rows, centre: NDArray[np.float64]) -> Rows:
     """Return the rows, each heading away from a place."""
     rows = rows.copy()
     inward = (rows[:, X] - centre[0]) * rows[:, TX] + (rows[:, Y] - centre[1]) * rows[:, TY] < 0
-    rows[np.ix_(inward, [TX, TY])] *= -1.0
+    rows[np.ix_(inward, [TX, TY, SIDE])] *= -1.0
     rows[np.ix_(inward, [LEFT, RIGHT])] = rows[np.ix_(inward, [RIGHT, LEFT])]
     return rows

@@ -25,6 +25,9 @@ class Pace(NamedTuple):
     turn_soft : cosine of the largest turn in one step; a step that turns more is shortened.
     memory : metres over which the curvature is averaged.
     coast : metres followed without seeing the line.
+    side_memory : metres over which the drive-over surface on the left is weighed against that on the right.
+    bare : difference below which the line divides no surface from anything and following stops ...
+    dividing : ... at the last place with so large a difference.
     bend_max : 1/m, the sharpest curvature carried into a prediction.
     loop_least : metres, the shortest loop.
     overlap : metres beside itself within which a line counts as running along itself.
@@ -44,6 +47,9 @@ class Pace(NamedTuple):
     turn_soft: float = 0.95
     memory: float = 1.0
     coast: float = 1.2
+    side_memory: float = 2.0
+    bare: float = 0.08
+    dividing: float = 0.25
     bend_max: float = 1.25
     loop_least: float = 4.0
     overlap: float = 0.15
@@ -82,8 +88,6 @@ class Settings:
     """Metres either way within which the canonical point of a line cut by its limit is looked for."""
 
     # Both ways along the line.
-    loop_touch_m: float = 0.3
-    """Metres from an earlier place of the line at which an end lies on the line itself."""
     loop_tail_m: float = 4.0
     """Metres of its beginning that a loop may lose where it closes."""
 
@@ -165,8 +169,9 @@ class Settings:
     neighbour_every_m: float = 1.2
     neighbour_asides_m: tuple[float, ...] = (0.5, 0.9, -0.5, -0.9)
     """Metres along the line between looks for other edges, and beside it."""
-    fork_angle: float = math.radians(10.0)
-    """An edge beside the line at a larger angle leaves it."""
+    fork_spread_m: float = 0.4
+    fork_slope: float = 0.1
+    """An edge beside the line whose distance changes by this, and by this much a metre, leaves it: a fork."""
     doubt_sigma_m: float = 0.20
     """Standard error from which a stretch counts as of low contrast."""
     doubt_beside: float = 0.0

@@ -13,6 +13,7 @@ from roadhem.tracing.follow import (
     KIND,
     LEFT,
     RIGHT,
+    SIDE,
     SIGHT,
     SIGMA,
     TRAVEL,
@@ -24,7 +25,7 @@ from roadhem.tracing.follow import (
 from roadhem.tracing.settings import Settings
 from roadhem.tracing.stretch import LANDED, Rows
 
-MIXED = [*range(KIND, KIND + 3), BESIDE, LEFT, RIGHT, SIGMA]
+MIXED = [*range(KIND, KIND + 3), BESIDE, LEFT, RIGHT, SIDE, SIGMA]
 
 
 def span_rows(span: NDArray[np.float64], before: Rows, after: Rows, settings: Settings) -> Rows:

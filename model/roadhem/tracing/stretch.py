@@ -9,7 +9,7 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from roadhem.tracing.follow import BEND, COLUMNS, FULL, LEFT, NEAR, RIGHT, TRAVEL, TX, TY, X, Y, follow
+from roadhem.tracing.follow import BEND, COLUMNS, FULL, LEFT, NEAR, RIGHT, SIDE, TRAVEL, TX, TY, X, Y, follow
 from roadhem.tracing.ridge import buffer
 from roadhem.tracing.settings import Settings
 from roadhem.tracing.sheet import MISSING, Sheet
@@ -49,7 +49,7 @@ def walk_on(sheet: Sheet, rows: Rows, budget_m: float, settings: Settings) -> Wa
 def turned(rows: Rows) -> Rows:
     """Return rows the other way round: last first, each heading back; TRAVEL changes its sign."""
     rows = rows[::-1].copy()
-    rows[:, [TX, TY, BEND, TRAVEL]] *= -1.0
+    rows[:, [TX, TY, BEND, TRAVEL, SIDE]] *= -1.0
     rows[:, [LEFT, RIGHT]] = rows[:, [RIGHT, LEFT]]
     return rows
 

@@ -6,11 +6,12 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from roadhem.fields.layout import NET_FIELDS
 from roadhem.tracing.bridge import bridge
 from roadhem.tracing.corner import turn_corner
-from roadhem.tracing.follow import ENDED, FADED, LIMIT, LOOPED, OVERLAP, SIGHT, TRAVEL, X, Y
+from roadhem.tracing.follow import BARE, ENDED, FADED, LIMIT, LOOPED, OVERLAP, TRAVEL, TX, TY, X, Y, met
 from roadhem.tracing.settings import Settings
-from roadhem.tracing.sheet import NO_DATA, OUTSIDE, Sheet
+from roadhem.tracing.sheet import NO_DATA, OUTSIDE, SEEN, VALID, Sheet, sample
 from roadhem.tracing.stretch import Rows, Walked, turned, walk_on
 
 REASON = {
@@ -54,23 +55,34 @@ def plain(sheet: Sheet, start: Rows, limit_m: float, settings: Settings) -> Run:
 
 def further(sheet: Sheet, walked: Walked, budget_m: float, settings: Settings) -> tuple[Walked, str]:
     """Carry on round corners and across gaps from where following stopped; the rows, and why the line stops."""
-    while walked.code in (ENDED, FADED):
-        if _came_round(walked.rows, settings):
-            return walked, "looped"
+    while walked.code in (ENDED, FADED, BARE):
         rows = turn_corner(sheet, walked.rows, settings)
         if rows is None:
             rows = bridge(sheet, walked.rows, walked.code == ENDED, settings)
-        if rows is None:
-            clear = walked.code == ENDED or walked.rows[-1, SIGHT] > 0.5
+        if rows is None or rows[-1, TRAVEL] < walked.rows[-1, TRAVEL] + settings.pace.step_max:
+            clear = walked.code == ENDED or _clear_ahead(sheet, walked.rows[-1], settings)
             return walked, "end" if clear else "unsure"
-        walked = walk_on(sheet, rows, budget_m, settings)
+        walked = _come_round(walked.rows, rows, settings) or walk_on(sheet, rows, budget_m, settings)
     return walked, REASON[walked.code]
 
 
-def _came_round(rows: Rows, settings: Settings) -> bool:
-    """Whether the line ends on itself: round the next corner it would only go the same way again."""
-    earlier = rows[rows[-1, TRAVEL] - rows[:, TRAVEL] >= settings.pace.loop_least]
-    return bool((np.hypot(*(earlier[:, [X, Y]] - rows[-1, [X, Y]]).T) < settings.loop_touch_m).any())
+def _come_round(old: Rows, rows: Rows, settings: Settings) -> Walked | None:
+    """What following would have given where rows put on round a corner or across a gap lie on the line's own."""
+    common = min(len(old), len(rows))
+    fresh = int(np.argmin(np.append(np.all(old[:common, [X, Y]] == rows[:common, [X, Y]], axis=1), False)))
+    for n in range(fresh + 1, len(rows) + 1):
+        k = met(rows, n, settings.pace)
+        if k >= 0:
+            same = rows[k, [TX, TY]] @ rows[n - 1, [TX, TY]] > 0
+            return Walked(rows[:n], LOOPED if same else OVERLAP, k)
+    return None
+
+
+def _clear_ahead(sheet: Sheet, end: Rows, settings: Settings) -> bool:
+    """Whether an edge, were there one just ahead, would be seen rather than hidden or in shadow."""
+    values = np.zeros(len(NET_FIELDS))
+    x, y = end[[X, Y]] + 0.5 * settings.pace.coast * end[[TX, TY]]
+    return sheet.run(sample, x, y, values) == VALID and values[SEEN] > 0.5
 
 
 def whole(sheet: Sheet, start: Rows, limit_m: float, settings: Settings) -> Line:
