@@ -14,6 +14,9 @@ from roadhem.tracing.settings import Settings
 from roadhem.tracing.sheet import NO_DATA, OUTSIDE, SEEN, VALID, Sheet, sample
 from roadhem.tracing.stretch import Rows, Walked, turned, walk_on
 
+STOPPED = (ENDED, FADED, BARE)
+"""How following stops where a corner or a gap may lie."""
+
 REASON = {
     OUTSIDE: "tile_border",
     NO_DATA: "no_data",
@@ -55,15 +58,25 @@ def plain(sheet: Sheet, start: Rows, limit_m: float, settings: Settings) -> Run:
 
 def further(sheet: Sheet, walked: Walked, budget_m: float, settings: Settings) -> tuple[Walked, str]:
     """Carry on round corners and across gaps from where following stopped; the rows, and why the line stops."""
-    while walked.code in (ENDED, FADED, BARE):
-        rows = turn_corner(sheet, walked.rows, settings)
-        if rows is None:
-            rows = bridge(sheet, walked.rows, walked.code == ENDED, settings)
-        if rows is None or rows[-1, TRAVEL] < walked.rows[-1, TRAVEL] + settings.pace.step_max:
+    while walked.code in STOPPED:
+        onward = _onward(sheet, walked, budget_m, settings)
+        if onward is None:
             clear = walked.code == ENDED or _clear_ahead(sheet, walked.rows[-1], settings)
             return walked, "end" if clear else "unsure"
-        walked = _come_round(walked.rows, rows, settings) or walk_on(sheet, rows, budget_m, settings)
+        walked = onward
     return walked, REASON[walked.code]
+
+
+def _onward(sheet: Sheet, walked: Walked, budget_m: float, settings: Settings) -> Walked | None:
+    """Follow on round a corner or across a gap; None where that leads no farther."""
+    least = walked.rows[-1, TRAVEL] + settings.pace.step_max
+    rows = turn_corner(sheet, walked.rows, settings)
+    if rows is None:
+        rows = bridge(sheet, walked.rows, walked.code == ENDED, settings)
+    if rows is None or rows[-1, TRAVEL] < least:
+        return None
+    onward = _come_round(walked.rows, rows, settings) or walk_on(sheet, rows, budget_m, settings)
+    return None if onward.code in STOPPED and onward.rows[-1, TRAVEL] < least else onward
 
 
 def _come_round(old: Rows, rows: Rows, settings: Settings) -> Walked | None:
