@@ -90,8 +90,8 @@ def find_model(name: str | None) -> Path:
         return folder
     known = ", ".join(model.name for model in models) or "none"
     if path.is_file() or path.is_dir():
-        raise BadInput(f"{name} is not a Roadhem model; a model folder holds {WEIGHTS} and {CARD}")
-    raise BadInput(f"There is no model '{name}', neither on the shelf ({known}) nor as a folder")
+        raise BadInput(f"{name} is not a Roadhem model; a model folder holds {WEIGHTS} and {CARD}.")
+    raise BadInput(f"There is no model '{name}', neither on the shelf ({known}) nor as a folder.")
 
 
 def _cards(folder: Path) -> list[Path]:

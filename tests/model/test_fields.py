@@ -296,7 +296,7 @@ def test_model_is_found_by_path_and_name(tmp_path: Path, monkeypatch: pytest.Mon
     folder = write_model(tmp_path / "shelf" / "night-3", mean_net(), name="night-3")
     by = [Model.load(folder), Model.load(folder / "weights.onnx"), Model.load("night-3")]
     assert {model.name for model in by} == {"night-3"}
-    with pytest.raises(BadInput, match="no model night-4"):
+    with pytest.raises(BadInput, match="no model 'night-4'"):
         Model.load("night-4")
     with pytest.raises(BadInput, match="no model"):
         Model.load("../shelf/night-9")
