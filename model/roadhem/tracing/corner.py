@@ -121,6 +121,7 @@ def _proved(
     start[0, [TRAVEL, COAST]] = 0.0
     back, _, _ = walk_on(sheet, turned(start), settings.corner_gap_m + settings.corner_rings_m[-1], settings)
     after, code, _ = walk_on(sheet, turned(back), settings.corner_leg_m, settings)
+    after = _beyond(rows[-60:], after, settings)
     begun = after[0, [X, Y]]
     second = straight(between(after, blur_m, settings.corner_leg_m + blur_m, after[0, TRAVEL]))
     corner, gap = leg.meets(second), float(np.hypot(*(begun - here)))
@@ -138,6 +139,14 @@ def _proved(
     if np.mean(after[:, NEAR]) < settings.sure:
         return None
     return _Exit(leg, after, corner, blur_m, gap) if gap <= settings.corner_both_m else None
+
+
+def _beyond(before: Rows, after: Rows, settings: Settings) -> Rows:
+    """The line beyond without what lies on the leg before the corner: walked back, it may go round by itself."""
+    apart = np.linalg.norm(after[:, None, [X, Y]] - before[None, :, [X, Y]], axis=2)
+    parallel = after[:, [TX, TY]] @ before[:, [TX, TY]].T >= settings.pace.turn_max
+    shared = np.flatnonzero(np.any((apart < settings.scout_m) & parallel, axis=1))
+    return after[min(int(np.max(shared, initial=-1)) + 1, len(after) - 1) :]
 
 
 def _joined(sheet: Sheet, rows: Rows, found: _Exit, settings: Settings) -> Rows | None:

@@ -94,14 +94,15 @@ def advance(table, origin, last, pace, values):  # type: ignore[no-untyped-def]
 
     Returns
     -------
-    code : as `sample`. x, y, tx, ty, step : the new place. seen : whether the line is really there.
+    code : as `sample`. x, y, tx, ty, step : the new place. seen : whether the line is there and goes on in about this
+        heading.
     """
     step = pace.step_max
     if abs(last[BEND]) > 1e-6:
         step = min(max(math.sqrt(8.0 * pace.sagitta / abs(last[BEND])), pace.step_min), pace.step_max)
     while True:
         px, py, hx, hy = predict(last[X], last[Y], last[TX], last[TY], last[BEND], step)
-        code, x, y, tx, ty, _ = settle(table, origin, px, py, hx, hy, pace, values)
+        code, x, y, tx, ty, clear, agree = settle(table, origin, px, py, hx, hy, pace, values)
         if code == MISSING:
             return code, x, y, tx, ty, step, False
         gate = pace.gate * (0.3 + 0.7 * step / pace.step_max)
@@ -112,7 +113,8 @@ def advance(table, origin, last, pace, values):  # type: ignore[no-untyped-def]
         step = max(0.5 * step, pace.step_min)
     if code != VALID:
         return code, x, y, tx, ty, step, False
-    seen = aside <= gate and values[0, NEARNESS] >= pace.present
+    turns_off = clear >= pace.axis_clear and agree < pace.turn_max
+    seen = aside <= gate and values[0, NEARNESS] >= pace.present and not turns_off
     if not seen:
         x, y, tx, ty = px, py, hx, hy
         code = sample(table, origin, x, y, values[0])
@@ -182,18 +184,17 @@ def follow(table, origin, rows, n, budget, pace, values):  # type: ignore[no-unt
         row = rows[n]
         row[TRAVEL] = last[TRAVEL] + step
         row[COAST] = 0.0 if seen else last[COAST] + step
-        row[BEND] = last[BEND]
         row[FORM] = FOLLOWED
-        if seen:
-            turn = math.atan2(last[TX] * ty - last[TY] * tx, last[TX] * tx + last[TY] * ty)
-            fresh = 1.0 - math.exp(-step / pace.memory)
-            bend = (1.0 - fresh) * last[BEND] + fresh * turn / step
-            row[BEND] = min(max(bend, -pace.bend_max), pace.bend_max)
+        turn = math.atan2(last[TX] * ty - last[TY] * tx, last[TX] * tx + last[TY] * ty) if seen else 0.0
+        fresh = 1.0 - math.exp(-step / (pace.memory if seen else pace.memory_unseen))
+        bend = (1.0 - fresh) * last[BEND] + fresh * turn / step
+        row[BEND] = min(max(bend, -pace.bend_max), pace.bend_max)
         fresh = 1.0 - math.exp(-step / pace.side_memory)
         row[SIDE] = (1.0 - fresh) * last[SIDE] + fresh * row[SIDE]
         n += 1
-        if abs(row[SIDE]) < pace.bare:
-            while n > 1 and abs(rows[n - 1, LEFT] - rows[n - 1, RIGHT]) < pace.dividing:
+        sense = 1.0 if rows[0, SIDE] >= 0.0 else -1.0
+        if sense * row[SIDE] < pace.bare:
+            while n > 1 and sense * (rows[n - 1, LEFT] - rows[n - 1, RIGHT]) < pace.dividing:
                 n -= 1
             return BARE, n, -1
         k = met(rows, n, pace)

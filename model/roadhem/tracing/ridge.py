@@ -88,15 +88,16 @@ def settle(table, origin, x, y, hx, hy, pace, values):  # type: ignore[no-untype
     Returns
     -------
     code : as `sample`. x, y : the place on the line. tx, ty : its axis, along the heading. clear : as `axis_at`.
+    agree : cosine of the angle between axis and heading.
     """
-    tx, ty, clear, distance = hx, hy, 0.0, pace.reach
+    tx, ty, clear, agree, distance = hx, hy, 0.0, 1.0, pace.reach
     for _ in range(ITERATIONS):
         if abs(distance) > STEADY_M:
             code, ax, ay, clear = axis_at(table, origin, x, y, pace, values)
         else:
             code = sample(table, origin, x, y, values[0, :GEOMETRY])
         if code != VALID:
-            return code, x, y, tx, ty, clear
+            return code, x, y, tx, ty, clear, agree
         agree = ax * hx + ay * hy
         if agree < 0.0:
             ax, ay, agree = -ax, -ay, -agree
@@ -106,14 +107,14 @@ def settle(table, origin, x, y, hx, hy, pace, values):  # type: ignore[no-untype
             tx, ty = hx, hy
         code, distance = lateral(table, origin, x, y, tx, ty, pace, values)
         if code != VALID:
-            return code, x, y, tx, ty, clear
+            return code, x, y, tx, ty, clear, agree
         distance = min(max(distance, -pace.reach), pace.reach)
         x -= distance * ty
         y += distance * tx
         if abs(distance) < SETTLED_M:
             break
     code = sample(table, origin, x, y, values[0])
-    return code, x, y, tx, ty, clear
+    return code, x, y, tx, ty, clear, agree
 
 
 def buffer() -> np.ndarray:

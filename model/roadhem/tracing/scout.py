@@ -26,7 +26,7 @@ def settle_all(table, origin, places, headings, pace, rows, values):  # type: ig
             return code
         if code != VALID or values[0, NEARNESS] < FAINT:
             continue
-        code, x, y, tx, ty, clear = settle(
+        code, x, y, tx, ty, clear, _ = settle(
             table, origin, places[k, 0], places[k, 1], headings[k, 0], headings[k, 1], pace, values
         )
         if code == VALID and clear >= pace.axis_clear:

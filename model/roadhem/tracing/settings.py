@@ -23,7 +23,8 @@ class Pace(NamedTuple):
     axis_clear : length (0..1) of the mean double-angle vector below which the axis says nothing.
     turn_max : cosine of the largest turn in one step of the least length.
     turn_soft : cosine of the largest turn in one step; a step that turns more is shortened.
-    memory : metres over which the curvature is averaged.
+    memory, memory_unseen : metres over which the curvature is averaged, and over which it is lost where the line is
+        not seen.
     coast : metres followed without seeing the line.
     side_memory : metres over which the drive-over surface on the left is weighed against that on the right.
     bare : difference below which the line divides no surface from anything and following stops ...
@@ -46,9 +47,10 @@ class Pace(NamedTuple):
     turn_max: float = 0.7
     turn_soft: float = 0.95
     memory: float = 1.0
+    memory_unseen: float = 2.0
     coast: float = 1.2
     side_memory: float = 2.0
-    bare: float = 0.08
+    bare: float = -0.1
     dividing: float = 0.25
     bend_max: float = 1.25
     loop_least: float = 4.0
