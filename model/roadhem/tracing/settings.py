@@ -80,7 +80,7 @@ class Settings:
     """What another line on the same spot costs, in nearness."""
     sure: float = 0.45
     """Nearness a first fix needs."""
-    contrast: float = 0.25
+    contrast: float = 0.2
     """Difference in drive-over surface, left against right, that an edge needs."""
 
     # The canonical point.
