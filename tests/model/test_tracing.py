@@ -214,7 +214,7 @@ def test_second_edge_beside(aside: float) -> None:
     line = np.array([(100, -5), (0, -25)], float)
     other = [(-40, -33 + aside), (140, 3 + aside)]
     trace = traced(MadeFields([Edge(line), Edge(other)], noise_m=0.02), (40.0, -17.2))
-    assert farthest(trace, line) < 0.35
+    assert farthest(trace, line) < 0.4
     assert "competing_line" in reasons(trace)
 
 
@@ -284,6 +284,13 @@ def test_lane_line_unplaced() -> None:
     result = attempt(MadeFields([Edge([(0, 10), (100, 10)], lane=True)]), [(50, 10.2)])
     assert isinstance(result, Unplaced)
     assert "both sides" in result.reason
+
+
+def test_stub_unplaced() -> None:
+    """Should give no line where less than a metre of edge is seen."""
+    view = MadeFields([Edge([(30, -20), (30.6, -20)])])
+    result = attempt(view, [(30.3, -20)])
+    assert isinstance(result, Unplaced)
 
 
 def test_passes_within_the_radius() -> None:

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from roadhem.fields.layout import CELL_M
 from roadhem.tracing.follow import COAST, CORNER, FORM, LEFT, NEAR, RIGHT, TRAVEL, TX, TY, X, Y
 from roadhem.tracing.legs import Leg, Vector, between, hermite, straight, turn_of, vertex_row
 from roadhem.tracing.scout import lines_at, outward
@@ -22,13 +23,12 @@ class _Exit:
 
     Attributes
     ----------
-    before : the leg up to the corner. after : rows of the line beyond, from where it comes into sight.
-    corner : where both meet; None at a nose, where the line turns back beside itself.
+    after : rows of the line beyond, from where it comes into sight.
+    corner : where both meet; None at a nose, where the line turns back beside itself, and where a curve joins both.
     blur_m : how far the fields bend either side of the corner.
     gap_m : metres not seen, both legs together.
     """
 
-    before: Leg
     after: Rows
     corner: Vector | None
     blur_m: float
@@ -101,44 +101,56 @@ def _reachable(here: Vector, leg: Leg, row: Rows, turn: float, settings: Setting
     if corner is not None:
         ahead = leg.along(corner) - leg.along(here)
         longest = settings.corner_gap_m if turn >= settings.corner_gap_turn else settings.corner_reach_m
-        if -settings.corner_reach_m <= ahead <= longest and (place - corner) @ row[[TX, TY]] > 0.0:
+        if -settings.corner_past_m <= ahead <= longest and (place - corner) @ row[[TX, TY]] > 0.0:
             return True
-    return turn >= settings.nose_turn and _beside(leg, here, place, settings)
+    if turn >= settings.nose_turn:
+        return _beside(leg, here, place, settings)
+    return float(np.hypot(*(place - here))) <= settings.corner_link_m
 
 
 def _beside(leg: Leg, here: Vector, place: Vector, settings: Settings) -> bool:
     """Whether a place lies on the other side of a nose."""
     aside = abs(leg.beside(place))
-    return settings.nose_least_m <= aside <= settings.nose_most_m and leg.along(place) <= leg.along(here)
+    behind = leg.along(here) - leg.along(place) >= -settings.corner_reach_m
+    return behind and settings.nose_least_m <= aside <= settings.nose_most_m
 
 
 def _proved(
     sheet: Sheet, rows: Rows, row: Rows, leg: Leg, blur_m: float, settings: Settings
 ) -> _Exit | None:
     """Follow a line leading away both ways: it must begin near the corner and carry on."""
-    here = rows[-1, [X, Y]]
     start = row[None].copy()
     start[0, [TRAVEL, COAST]] = 0.0
     back, _, _ = walk_on(sheet, turned(start), settings.corner_gap_m + settings.corner_rings_m[-1], settings)
     after, code, _ = walk_on(sheet, turned(back), settings.corner_leg_m, settings)
     after = _beyond(rows[-60:], after, settings)
-    begun = after[0, [X, Y]]
-    second = straight(between(after, blur_m, settings.corner_leg_m + blur_m, after[0, TRAVEL]))
-    corner, gap = leg.meets(second), float(np.hypot(*(begun - here)))
-    if corner is not None:
-        ahead, behind = leg.along(corner) - leg.along(here), second.along(begun) - second.along(corner)
-        near = min(ahead, behind) >= -settings.corner_reach_m and max(ahead, behind) <= settings.corner_gap_m
-        corner, gap = (corner, max(ahead, 0.0) + max(behind, 0.0)) if near else (None, gap)
-    if corner is None:
-        turn = abs(turn_of(leg.direction, row[[TX, TY]]))
-        if turn < settings.nose_turn or gap > settings.nose_gap_m or not _beside(leg, here, row[[X, Y]], settings):
-            return None
+    meeting = _meeting(sheet, rows[-1, [X, Y]], leg, after, blur_m, settings)
+    if meeting is None:
+        return None
+    corner, gap = meeting
     least = min(max(0.5 * gap, settings.corner_proof_m), settings.bridge_proof_m)
     if after[-1, TRAVEL] - after[0, TRAVEL] < least and code not in (OUTSIDE, NO_DATA):
         return None
-    if np.mean(after[:, NEAR]) < settings.sure:
-        return None
-    return _Exit(leg, after, corner, blur_m, gap) if gap <= settings.corner_both_m else None
+    sure = np.mean(after[:, NEAR]) >= settings.sure and gap <= settings.corner_both_m
+    return _Exit(after, corner, blur_m, gap) if sure else None
+
+
+def _meeting(
+    sheet: Sheet, here: Vector, leg: Leg, after: Rows, blur_m: float, settings: Settings
+) -> tuple[Vector | None, float] | None:
+    """Where two lines meet, and how many metres of both are not seen; no vertex at a nose or curve; None if apart."""
+    begun = after[0, [X, Y]]
+    second = straight(between(after, blur_m, settings.corner_leg_m + blur_m, after[0, TRAVEL]))
+    corner = leg.meets(second)
+    if corner is not None:
+        ahead, behind = leg.along(corner) - leg.along(here), second.along(begun) - second.along(corner)
+        if min(ahead, behind) >= -settings.corner_past_m and max(ahead, behind) <= settings.corner_gap_m:
+            return corner, max(ahead, 0.0) + max(behind, 0.0)
+    gap = float(np.hypot(*(begun - here)))
+    if abs(turn_of(leg.direction, second.direction)) >= settings.nose_turn:
+        return (None, gap) if gap <= settings.nose_gap_m and _beside(leg, here, begun, settings) else None
+    seen = gap <= settings.corner_link_m and _nearness(sheet, _even(here, begun, CELL_M)) >= settings.sure
+    return (None, gap) if seen else None
 
 
 def _beyond(before: Rows, after: Rows, settings: Settings) -> Rows:
@@ -153,12 +165,11 @@ def _joined(sheet: Sheet, rows: Rows, found: _Exit, settings: Settings) -> Rows 
     """Both lines without the rows near the corner, where the fields bend, and the corner between them."""
     after = found.after
     if found.corner is None:
-        span = hermite(
-            rows[-1, [X, Y]], found.before.direction, after[0, [X, Y]], after[0, [TX, TY]], settings.pace.step_min
-        )
-        nose = span_rows(span, rows[-1], after[0], settings)
-        nose[:, FORM] = CORNER
-        return linked(rows, nose, after)
+        a, b = rows[-1], after[0]
+        span = hermite(a[[X, Y]], a[[TX, TY]], b[[X, Y]], b[[TX, TY]], settings.pace.step_min)
+        curve = span_rows(span, a, b, settings)
+        curve[:, FORM] = CORNER
+        return linked(rows, curve, after)
     last = len(rows) - 1
     while last > 0 and np.hypot(*(rows[last, [X, Y]] - found.corner)) < found.blur_m:
         last -= 1

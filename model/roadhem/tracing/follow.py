@@ -123,10 +123,15 @@ def advance(table, origin, last, pace, values):  # type: ignore[no-untyped-def]
 
 @compiled
 def end_row(table, origin, rows, n, x, y, pace, values):  # type: ignore[no-untyped-def]
-    """Make the last row lie beside (x, y), where the line was seen to end; returns a code as `sample`, and n anew."""
+    """Make the line end beside (x, y), where it was seen to end; returns a code as `sample`, and the rows there are.
+
+    The last row is dropped where it lies past that place.
+    """
+    if n > 1 and (x - rows[n - 1, X]) * rows[n - 1, TX] + (y - rows[n - 1, Y]) * rows[n - 1, TY] < 0.0:
+        n -= 1
     last = rows[n - 1]
     short = (x - last[X]) * last[TX] + (y - last[Y]) * last[TY]
-    if abs(short) > pace.step_max:
+    if short < 0.0 or short > 2.0 * pace.step_max:
         return VALID, n
     row = rows[n]
     x, y = last[X] + short * last[TX], last[Y] + short * last[TY]
@@ -135,10 +140,7 @@ def end_row(table, origin, rows, n, x, y, pace, values):  # type: ignore[no-unty
         return code, n
     row[TRAVEL], row[COAST], row[BEND], row[FORM] = last[TRAVEL] + short, 0.0, last[BEND], last[FORM]
     row[SIDE] = last[SIDE]
-    if short > 0.0:
-        return VALID, n + 1
-    rows[n - 1] = row
-    return VALID, n
+    return VALID, n + 1
 
 
 @compiled

@@ -42,7 +42,7 @@ class Pace(NamedTuple):
     reach: float = 0.3
     gate: float = 0.22
     present: float = 0.25
-    beyond: float = 0.25
+    beyond: float = 0.45
     axis_clear: float = 0.3
     turn_max: float = 0.7
     turn_soft: float = 0.95
@@ -90,6 +90,8 @@ class Settings:
     """Metres either way within which the canonical point of a line cut by its limit is looked for."""
 
     # Both ways along the line.
+    least_m: float = 1.0
+    """Shortest line that is worth giving."""
     loop_tail_m: float = 4.0
     """Metres of its beginning that a loop may lose where it closes."""
 
@@ -106,6 +108,10 @@ class Settings:
     """Metres a line beyond a corner must be followed at the least."""
     corner_reach_m: float = 0.8
     """A corner that is seen lies within this of where following stopped."""
+    corner_past_m: float = 1.3
+    """Metres that either line may run past the corner: rounded fields lead there."""
+    corner_link_m: float = 1.6
+    """Metres across which a line leading away is joined by a curve, if the fields show one."""
     corner_gap_m: float = 3.0
     corner_both_m: float = 4.5
     """Metres of a leg, and of both, that may be hidden at a corner."""

@@ -89,7 +89,11 @@ def follow_seed(
             break
         start = better
     line = whole(sheet, start, limit_m, settings)
-    return line if passes(line, seed, radius_m) else whole(sheet, fix, limit_m, settings)
+    if not passes(line, seed, radius_m):
+        line = whole(sheet, fix, limit_m, settings)
+    if line.length_m < settings.least_m:
+        return Unplaced("The edge beside the seed is lost within a metre; click where more of it is seen.")
+    return line
 
 
 def near_part(run: Run, seed: NDArray[np.float64], settings: Settings) -> Rows:

@@ -36,6 +36,11 @@ class Line:
     end_reason: str
     closed: bool
 
+    @property
+    def length_m(self) -> float:
+        """Length in metres."""
+        return float(np.sum(np.hypot(*np.diff(self.rows[:, [X, Y]], axis=0).T)))
+
 
 @dataclass(frozen=True)
 class Run:
@@ -61,8 +66,7 @@ def further(sheet: Sheet, walked: Walked, budget_m: float, settings: Settings) -
     while walked.code in STOPPED:
         onward = _onward(sheet, walked, budget_m, settings)
         if onward is None:
-            clear = walked.code == ENDED or _clear_ahead(sheet, walked.rows[-1], settings)
-            return walked, "end" if clear else "unsure"
+            return _stopped(sheet, walked, settings)
         walked = onward
     return walked, REASON[walked.code]
 
@@ -91,11 +95,22 @@ def _come_round(old: Rows, rows: Rows, settings: Settings) -> Walked | None:
     return None
 
 
-def _clear_ahead(sheet: Sheet, end: Rows, settings: Settings) -> bool:
-    """Whether an edge, were there one just ahead, would be seen rather than hidden or in shadow."""
-    values = np.zeros(len(NET_FIELDS))
-    x, y = end[[X, Y]] + 0.5 * settings.pace.coast * end[[TX, TY]]
-    return sheet.run(sample, x, y, values) == VALID and values[SEEN] > 0.5
+def _stopped(sheet: Sheet, walked: Walked, settings: Settings) -> tuple[Walked, str]:
+    """The rows, and why they end where nothing goes on; they are drawn out to the border where that is just ahead.
+
+    An edge that fades where it would be seen ends; one that would be hidden or in shadow may go on unseen.
+    """
+    end, values = walked.rows[-1], np.zeros(len(NET_FIELDS))
+    reach = settings.pace.coast + settings.pace.step_max
+    for ahead in np.arange(settings.pace.step_min, reach, settings.pace.step_min):
+        x, y = end[[X, Y]] + ahead * end[[TX, TY]]
+        code = sheet.run(sample, x, y, values)
+        if code != VALID:
+            drawn = end.copy()
+            drawn[[X, Y]] += (ahead - settings.pace.step_min) * end[[TX, TY]]
+            drawn[TRAVEL] += ahead - settings.pace.step_min
+            return walked._replace(rows=np.concatenate([walked.rows, drawn[None]]), code=code), REASON[code]
+    return walked, "end" if walked.code == ENDED or values[SEEN] > 0.5 else "unsure"
 
 
 def whole(sheet: Sheet, start: Rows, limit_m: float, settings: Settings) -> Line:
