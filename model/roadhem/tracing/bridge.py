@@ -15,7 +15,7 @@ from roadhem.tracing.span import linked, span_rows
 from roadhem.tracing.stretch import Arc, Rows, fit_arc, side, turned, walk_on
 
 
-def bridge(sheet: Sheet, rows: Rows, ended: bool, settings: Settings) -> Rows | None:
+def bridge(sheet: Sheet, rows: Rows, settings: Settings, *, ended: bool) -> Rows | None:
     """Continue beyond a hidden stretch where following stopped.
 
     Parameters

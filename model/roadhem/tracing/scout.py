@@ -9,7 +9,7 @@ from roadhem.tracing.compiled import compiled
 from roadhem.tracing.follow import COLUMNS, LEFT, NEAR, RIGHT, SIDE, TX, TY, X, Y, put_row
 from roadhem.tracing.ridge import buffer, settle
 from roadhem.tracing.settings import Settings
-from roadhem.tracing.sheet import GEOMETRY, MISSING, NEARNESS, VALID, Sheet, sample
+from roadhem.tracing.sheet import DX, DY, GEOMETRY, MISSING, NEARNESS, VALID, Sheet, sample
 from roadhem.tracing.stretch import Rows
 
 FAINT = 0.2
@@ -18,7 +18,7 @@ FAINT = 0.2
 
 @compiled
 def settle_all(table, origin, places, headings, pace, rows, values):  # type: ignore[no-untyped-def]
-    """Settle every place and fill its row; NEAR is -1 where there is no line."""
+    """Settle every place and fill its row; NEAR is -1 where there is no line, or only the end of one further on."""
     for k in range(len(places)):
         rows[k, NEAR] = -1.0
         code = sample(table, origin, places[k, 0], places[k, 1], values[0, :GEOMETRY])
@@ -29,7 +29,8 @@ def settle_all(table, origin, places, headings, pace, rows, values):  # type: ig
         code, x, y, tx, ty, clear, _ = settle(
             table, origin, places[k, 0], places[k, 1], headings[k, 0], headings[k, 1], pace, values
         )
-        if code == VALID and clear >= pace.axis_clear:
+        along = values[0, DX] * tx + values[0, DY] * ty
+        if code == VALID and clear >= pace.axis_clear and abs(along) <= pace.beyond:
             code = put_row(table, origin, rows[k], x, y, tx, ty, values)
         if code == MISSING:
             return code

@@ -34,14 +34,16 @@ class Walked(NamedTuple):
 def walk_on(sheet: Sheet, rows: Rows, budget_m: float, settings: Settings) -> Walked:
     """Follow from the last of the rows until something stops it, at the latest at TRAVEL budget_m."""
     n = len(rows)
-    room = np.concatenate([rows, np.zeros((CAPACITY, COLUMNS))])
+    most = math.ceil(max(budget_m - rows[-1, TRAVEL], 0.0) / settings.pace.step_min) + 2
+    room = np.empty((n + min(most, CAPACITY), COLUMNS))
+    room[:n] = rows
     values = buffer()
     while True:
         code, n, met = follow(sheet.table, sheet.origin, room, n, budget_m, settings.pace, values)
         if code == MISSING:
             sheet.fetch()
         elif code == FULL:
-            room = np.concatenate([room, np.zeros_like(room)])
+            room = np.concatenate([room, np.empty_like(room)])
         else:
             return Walked(room[:n], code, met)
 

@@ -81,16 +81,15 @@ def follow_seed(
     fix = first_fix(sheet, seed, radius_m, settings)
     if isinstance(fix, Unplaced):
         return fix
-    start = fix
-    for _ in range(3):
-        run = plain(sheet, start, limit_m, settings)
+    start, run = fix, plain(sheet, fix, limit_m, settings)
+    for _ in range(2):
         better = canonical(sheet, near_part(run, seed, settings), settings)
         if better is None or np.array_equal(better[:2], start[:2]):
             break
-        start = better
-    line = whole(sheet, start, limit_m, settings)
+        start, run = better, plain(sheet, better, limit_m, settings)
+    line = whole(sheet, run, limit_m, settings)
     if not passes(line, seed, radius_m):
-        line = whole(sheet, fix, limit_m, settings)
+        line = whole(sheet, plain(sheet, fix, limit_m, settings), limit_m, settings)
     if line.length_m < settings.least_m:
         return Unplaced("The edge beside the seed is lost within a metre; click where more of it is seen.")
     return line

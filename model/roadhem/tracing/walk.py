@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import partial
 
 import numpy as np
 
@@ -72,15 +73,16 @@ def further(sheet: Sheet, walked: Walked, budget_m: float, settings: Settings) -
 
 
 def _onward(sheet: Sheet, walked: Walked, budget_m: float, settings: Settings) -> Walked | None:
-    """Follow on round a corner or across a gap; None where that leads no farther."""
+    """Follow on round a corner or across a gap; None where neither leads farther."""
     least = walked.rows[-1, TRAVEL] + settings.pace.step_max
-    rows = turn_corner(sheet, walked.rows, settings)
-    if rows is None:
-        rows = bridge(sheet, walked.rows, walked.code == ENDED, settings)
-    if rows is None or rows[-1, TRAVEL] < least:
-        return None
-    onward = _come_round(walked.rows, rows, settings) or walk_on(sheet, rows, budget_m, settings)
-    return None if onward.code in STOPPED and onward.rows[-1, TRAVEL] < least else onward
+    for find in (turn_corner, partial(bridge, ended=walked.code == ENDED)):
+        rows = find(sheet, walked.rows, settings)
+        if rows is None or rows[-1, TRAVEL] < least:
+            continue
+        onward = _come_round(walked.rows, rows, settings) or walk_on(sheet, rows, budget_m, settings)
+        if onward.code not in STOPPED or onward.rows[-1, TRAVEL] >= least:
+            return onward
+    return None
 
 
 def _come_round(old: Rows, rows: Rows, settings: Settings) -> Walked | None:
@@ -113,9 +115,8 @@ def _stopped(sheet: Sheet, walked: Walked, settings: Settings) -> tuple[Walked, 
     return walked, "end" if walked.code == ENDED or values[SEEN] > 0.5 else "unsure"
 
 
-def whole(sheet: Sheet, start: Rows, limit_m: float, settings: Settings) -> Line:
-    """Follow from a row both ways as far as the line can be carried, `limit_m` in all."""
-    run = plain(sheet, start, limit_m, settings)
+def whole(sheet: Sheet, run: Run, limit_m: float, settings: Settings) -> Line:
+    """Carry what following gave both ways on as far as it goes, `limit_m` in all."""
     ahead, end_reason = further(sheet, run.ahead, 0.5 * limit_m, settings)
     rows = ahead.rows
     if ahead.code == LOOPED and rows[ahead.met, TRAVEL] - rows[0, TRAVEL] <= settings.loop_tail_m:
